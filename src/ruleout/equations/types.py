@@ -120,9 +120,9 @@ class Setup:
         there as parameters ``start:NODE``; None if no state starts at rest.
     rest_factor, rest_shift : tuple of float
         Per parameter of ``rest_system``: value = factor * p + shift (inputs at resting level).
-    levels : mapping of node to Expr
-        Every node's amount over system states, system parameters in force and ``time`` (a removed
-        node is 0, a clamped one its level, an input its course), for readouts.
+    fixed_levels : mapping of node to tuple of float
+        Amounts at the output times of the nodes that are no states of ``system``: inputs, clamped
+        and removed nodes.
     """
 
     condition: str
@@ -133,4 +133,4 @@ class Setup:
     rest_system: System | None
     rest_factor: tuple[float, ...]
     rest_shift: tuple[float, ...]
-    levels: Mapping[str, Expr]
+    fixed_levels: Mapping[str, tuple[float, ...]]
