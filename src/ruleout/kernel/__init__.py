@@ -1,5 +1,14 @@
 """The batched ODE kernel: systems in, states out."""
 
+from ruleout.kernel.program import Program, compile_system
 from ruleout.kernel.types import Protocol, Solution, Status, SteadyStates, System
 
-__all__ = ["Protocol", "Solution", "Status", "SteadyStates", "System"]
+__all__ = [
+    "Program",
+    "Protocol",
+    "Solution",
+    "Status",
+    "SteadyStates",
+    "System",
+    "compile_system",
+]
