@@ -1,0 +1,152 @@
+"""Commands and their options; everything slow is imported when its command runs."""
+
+from __future__ import annotations
+
+from enum import StrEnum
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from ruleout import __version__
+from ruleout.cli.guard import guarded
+
+app = typer.Typer(
+    name="ruleout",
+    help="Which wirings of a biological mechanism do the data rule out?",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+
+class Effort(StrEnum):
+    """How much computing a judgement may cost."""
+
+    quick = "quick"
+    standard = "standard"
+    thorough = "thorough"
+
+
+class Log(StrEnum):
+    """How progress is written."""
+
+    text = "text"
+    json = "json"
+
+
+CaseFolder = Annotated[
+    Path,
+    typer.Argument(
+        metavar="CASE",
+        help="Folder with mechanism.toml, experiments.toml and data.csv.",
+        show_default=False,
+    ),
+]
+Seed = Annotated[int, typer.Option(min=0, help="Root of every random number of the run.")]
+LogOption = Annotated[Log, typer.Option("--log", help="Progress as text or as JSON lines.")]
+
+
+def _show_version(wanted: bool) -> None:
+    if wanted:
+        typer.echo(f"ruleout {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _options(
+    _version: Annotated[
+        bool,
+        typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version."),
+    ] = False,
+) -> None:
+    pass
+
+
+@app.command()
+def judge(
+    case: CaseFolder,
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="DIR",
+            help="Folder for the results.",
+            show_default="reports/CASE",
+        ),
+    ] = None,
+    seed: Seed = 1,
+    workers: Annotated[
+        int | None,
+        typer.Option(min=1, help="Processes to use.", show_default="all cores"),
+    ] = None,
+    effort: Annotated[Effort, typer.Option(help="How much computing to spend.")] = Effort.standard,
+    alpha: Annotated[
+        float, typer.Option(help="Chance of ruling out a true variant that is accepted.")
+    ] = 0.05,
+    log: LogOption = Log.text,
+) -> None:
+    """Fit every variant of a case, check each and say which ones the data rule out."""
+    from ruleout.cli.judging import run_judge
+
+    out = out or Path("reports") / case.resolve().name
+    kept = f"Finished stages are kept in {out}; give the same command again to go on from there."
+    with guarded(kept):
+        status = run_judge(
+            case,
+            out=out,
+            seed=seed,
+            workers=workers,
+            effort=effort.value,
+            alpha=alpha,
+            as_json=log is Log.json,
+        )
+        raise typer.Exit(status)
+
+
+@app.command()
+def inspect(case: CaseFolder, seed: Seed = 1) -> None:
+    """Show a case's variants, equations, loops and what to mend before fitting."""
+    from ruleout.cli.inspecting import run_inspect
+
+    with guarded():
+        run_inspect(case, seed)
+
+
+@app.command()
+def new(
+    folder: Annotated[
+        Path, typer.Argument(metavar="DIR", help="Folder to make.", show_default=False)
+    ],
+) -> None:
+    """Write a small commented case to start from."""
+    from ruleout.cli.starting import write_new_case
+
+    with guarded():
+        write_new_case(folder)
+
+
+@app.command()
+def report(
+    run: Annotated[
+        Path, typer.Argument(metavar="RUN", help="Folder of a finished run.", show_default=False)
+    ],
+    style: Annotated[
+        Path | None,
+        typer.Option(metavar="FILE", help="Matplotlib style file laid over the figures' own."),
+    ] = None,
+) -> None:
+    """Write a finished run's report and figures again."""
+    from ruleout.cli.reporting import run_report
+
+    with guarded():
+        run_report(run, style)
+
+
+@app.command()
+def doctor() -> None:
+    """Check that this machine has what judging needs."""
+    from ruleout.cli.doctor import run_doctor
+
+    with guarded():
+        raise typer.Exit(run_doctor())

@@ -1,0 +1,82 @@
+"""The words, signs and number formats that every output shares."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Final
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from ruleout.experiments.types import Experiments
+
+VERDICTS: Final[Mapping[str, str]] = {
+    "kept": "kept",
+    "not_judged": "not judged",
+    "ruled_out": "ruled out",
+}
+"""Words for a variant's verdict, in the order in which tables list them."""
+
+CLAIM_VERDICTS: Final[Mapping[str, str]] = {
+    "needed": "needed",
+    "excluded": "excluded",
+    "not_needed": "not shown to be needed",
+    "undecided": "undecided",
+    "nothing_fits": "nothing fits",
+}
+
+KEPT_MEANS: Final = (
+    "'Kept' means not ruled out by these data. It does not mean proven: another experiment may "
+    "still rule it out, and mechanisms that were not on the list were not judged."
+)
+
+DOSING_CAUTION: Final = (
+    "This case gives doses. Its verdicts are about the wiring of a model, for research; they are "
+    "no basis for choosing a dose or a treatment for anybody."
+)
+
+
+def looks_like_dosing(experiments: Experiments) -> bool:
+    """Whether any condition adds amounts to a node, as doses do."""
+    return any(condition.add for condition in experiments.conditions.values())
+
+
+def p_text(p: float) -> str:
+    """Return a p-value to two significant digits, or a dash where there is none."""
+    if p is None or math.isnan(p):
+        return "–"
+    return f"{p:.2f}" if p >= 0.095 else f"{p:.2g}"
+
+
+def number_text(value: float) -> str:
+    """Return a number to three significant digits, or a dash where there is none."""
+    return "–" if value is None or math.isnan(value) else f"{value:.3g}"
+
+
+def split_names(cell: object) -> list[str]:
+    """Return the names in a ``;``-separated cell, which may be empty or missing."""
+    return [part for part in str(cell).split(";") if part] if isinstance(cell, str) else []
+
+
+def by_verdict(variants: pd.DataFrame) -> pd.DataFrame:
+    """Return the variants table with the kept first, then not judged, then ruled out."""
+    order = {verdict: rank for rank, verdict in enumerate(VERDICTS)}
+    return variants.sort_values(
+        "verdict", key=lambda column: column.map(order), kind="stable", ignore_index=True
+    )
+
+
+def check_words(check: str) -> str:
+    """Return what a check's name says, in words.
+
+    ``edge:a+b`` is the score for letting contested choices in, ``serial`` residuals that follow
+    one another, ``misfit`` their size; ``KIND:CONDITION:READOUT`` looks at one series.
+    """
+    kind, _, rest = check.partition(":")
+    if kind == "edge":
+        return f"letting {rest.replace('+', ' and ')} in"
+    condition, _, readout = rest.partition(":")
+    where = f" of {readout} in {condition}" if readout else ""
+    names = {"serial": "runs in the residuals", "misfit": "size of the residuals"}
+    return names.get(kind, kind) + where
