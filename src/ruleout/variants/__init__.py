@@ -1,0 +1,23 @@
+"""Variants: every admissible wiring of a mechanism, their nesting, loops and claims."""
+
+from ruleout.variants.variantset import expand
+from ruleout.variants.types import (
+    ClaimSplit,
+    Contest,
+    Loop,
+    Option,
+    Variant,
+    VariantSet,
+    Wiring,
+)
+
+__all__ = [
+    "ClaimSplit",
+    "Contest",
+    "Loop",
+    "Option",
+    "Variant",
+    "VariantSet",
+    "Wiring",
+    "expand",
+]

@@ -13,7 +13,8 @@ class Option:
     """One way to settle a contested node or edge.
 
     ``present`` False leaves the rest empty. Written ``absent``, ``present`` (a node),
-    ``stimulates/hill`` or ``converts/first`` (effect, then law or rate label).
+    ``stimulates/hill`` or ``converts/first`` (effect, then law or rate label; an unlabelled rate
+    expression leaves the effect alone).
     """
 
     present: bool
@@ -26,7 +27,8 @@ class Option:
             return "absent"
         if self.effect is None:
             return "present"
-        return f"{self.effect}/{self.rate or self.law}"
+        detail = self.rate or self.law
+        return f"{self.effect}/{detail}" if detail else self.effect
 
 
 @dataclass(frozen=True, slots=True)
