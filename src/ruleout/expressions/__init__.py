@@ -15,8 +15,11 @@ from ruleout.expressions.graph import (
     sym,
     symbols,
 )
+from ruleout.expressions.parse import CALLABLE, parse
+from ruleout.expressions.printing import latex_name, to_latex, to_text
 
 __all__ = [
+    "CALLABLE",
     "FUNCTIONS",
     "ONE",
     "ZERO",
@@ -26,8 +29,12 @@ __all__ = [
     "const",
     "differentiate",
     "evaluate",
+    "latex_name",
     "ordered",
+    "parse",
     "substitute",
     "sym",
     "symbols",
+    "to_latex",
+    "to_text",
 ]
