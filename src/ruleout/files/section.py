@@ -6,12 +6,12 @@ import math
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, NoReturn
+from typing import Any, NoReturn, TypeVar
 
 from ruleout.errors import InputError, did_you_mean
 from ruleout.files.toml import place, read_toml
 
-LONGEST_TEXT = 2_000
+Word = TypeVar("Word", bound=str)
 LARGEST_NUMBER = 1e100
 
 
@@ -112,7 +112,7 @@ class Section:
             self.fail(key, "the text holds control characters; remove them")
         return value
 
-    def word(self, key: str, allowed: Sequence[str], default: str | None = None) -> str:
+    def word(self, key: str, allowed: Sequence[Word], default: Word | None = None) -> Word:
         """Return a field that is one of ``allowed``."""
         if key not in self.values:
             if default is None:
@@ -120,12 +120,13 @@ class Section:
             return default
         return self.one_of(key, self.values[key], allowed)
 
-    def one_of(self, key: str, value: object, allowed: Sequence[str]) -> str:
+    def one_of(self, key: str, value: object, allowed: Sequence[Word]) -> Word:
         """Return ``value`` if it is one of ``allowed``, else raise InputError."""
-        if not isinstance(value, str) or value not in allowed:
+        matching = [word for word in allowed if word == value]
+        if not matching:
             near = did_you_mean(value, allowed) if isinstance(value, str) else ""
             self.fail(key, f"{describe(value)} is not one of {', '.join(allowed)}{near}")
-        return value
+        return matching[0]
 
     def flag(self, key: str, default: bool = False) -> bool:
         """Return a field that is true or false."""
