@@ -26,9 +26,12 @@ def _arviz() -> ModuleType:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         import arviz
-
-        # ArviZ counts draws as numpy integers, whose division may warn.
     return arviz
+
+
+def arviz_version() -> str:
+    """Return the version of ArviZ in use."""
+    return str(_arviz().__version__)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

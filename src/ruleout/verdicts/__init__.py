@@ -1,0 +1,21 @@
+"""Coherent verdicts on variants, verdicts on claims, and their tables."""
+
+from ruleout.verdicts.claims import ClaimVerdict, judge_claim
+from ruleout.verdicts.coherence import KEPT, NOT_JUDGED, RULED_OUT, Own, Verdict, settle
+from ruleout.verdicts.reasons import reason, where_it_shows
+from ruleout.verdicts.types import COLUMNS, Judgement
+
+__all__ = [
+    "COLUMNS",
+    "KEPT",
+    "NOT_JUDGED",
+    "RULED_OUT",
+    "ClaimVerdict",
+    "Judgement",
+    "Own",
+    "Verdict",
+    "judge_claim",
+    "reason",
+    "settle",
+    "where_it_shows",
+]

@@ -1,0 +1,102 @@
+"""The main path: a case in, a judgement out."""
+
+from __future__ import annotations
+
+import asyncio
+import multiprocessing
+import signal
+from collections.abc import Coroutine
+from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
+from multiprocessing import get_context
+from pathlib import Path
+from typing import Any
+
+from ruleout.case import Case
+from ruleout.pipeline.assemble import assemble, save_fits
+from ruleout.pipeline.flow import Flow
+from ruleout.pipeline.settings import EFFORTS, Effort, Settings
+from ruleout.pipeline.variants import Results, judge_variants
+from ruleout.progress import Progress, Silent
+from ruleout.store import Store, locked, save_judgement
+from ruleout.verdicts import Judgement
+
+__all__ = ["EFFORTS", "Effort", "Settings", "judge"]
+
+
+def judge(
+    case: Case,
+    settings: Settings | None = None,
+    *,
+    out: Path,
+    progress: Progress | None = None,
+    executor: Executor | None = None,
+) -> Judgement:
+    """Judge every variant of a case and every claim about it.
+
+    Parameters
+    ----------
+    case : Case
+    settings : Settings, optional
+    out : Path
+        Run folder: finished pieces are kept there, and a later call goes on from them.
+    progress : Progress, optional
+    executor : concurrent.futures.Executor, optional
+        Where tasks run instead of ``settings.workers`` local processes; it must be able to pickle
+        tasks to wherever this package is installed. It is left open.
+
+    Returns
+    -------
+    Judgement
+        Also written to ``out`` as CSV and JSON, with one NetCDF file per fit.
+
+    Raises
+    ------
+    InputError
+        If the case cannot be judged as it stands or ``out`` cannot be used.
+    """
+    settings = settings or Settings()
+    with locked(out):
+        own = None if executor else _local_executor(settings.workers)
+        runner = executor or own
+        assert runner is not None
+        try:
+            flow = Flow(case, settings, Store(out), runner, progress or Silent())
+            results = _run(judge_variants(flow))
+        finally:
+            if own is not None:
+                _stop(own)
+        judgement = assemble(case, settings, results)
+        save_judgement(judgement, case, out)
+        save_fits(case, results, out)
+        return judgement
+
+
+def _run(main: Coroutine[Any, Any, Results]) -> Results:
+    """Run ``main``; of a group of failures the first is raised alone."""
+    try:
+        return asyncio.run(main)
+    except BaseExceptionGroup as group:
+        first: BaseException = group
+        while isinstance(first, BaseExceptionGroup):
+            first = first.exceptions[0]
+        raise first from None
+
+
+def _local_executor(workers: int) -> Executor:
+    if workers == 1:
+        return ThreadPoolExecutor(1, thread_name_prefix="ruleout")
+    return ProcessPoolExecutor(
+        workers, mp_context=get_context("spawn"), initializer=_leave_interrupts_to_the_parent
+    )
+
+
+def _leave_interrupts_to_the_parent() -> None:
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
+def _stop(executor: Executor) -> None:
+    """Give up what is still running: whatever is finished is on disk."""
+    executor.shutdown(wait=False, cancel_futures=True)
+    if isinstance(executor, ProcessPoolExecutor):
+        for child in multiprocessing.active_children():
+            child.terminate()

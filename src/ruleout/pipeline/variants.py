@@ -1,0 +1,211 @@
+"""All variants together: fits side by side, checks from the smallest up, claims at the end."""
+
+from __future__ import annotations
+
+import asyncio
+import math
+from dataclasses import dataclass
+from itertools import combinations
+
+import numpy as np
+
+from ruleout.pipeline import tasks
+from ruleout.pipeline.flow import Checks, Fit, Flow
+from ruleout.pipeline.tasks import Arrays
+from ruleout.store import digest
+from ruleout.verdicts import KEPT, ClaimVerdict, Own, Verdict, judge_claim, settle
+
+REACHABLE_SHARE = 0.025
+"""No-effect counts as reachable in at least this share of the larger variant's own prior."""
+FAILED_REPLICATES = 0.05
+MATCH_OBJECTIVE = 1.0
+"""Only variants whose objectives differ by less are compared curve by curve."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Results:
+    """Everything found about the variants of a case.
+
+    Attributes
+    ----------
+    fits, own, verdicts, summaries : mappings by variant
+    checks : mapping by variant
+        Missing where coherence made them unnecessary or the fit could not be used.
+    contains : mapping
+        The nesting confirmed by the reach of no-effect.
+    unreachable : tuple of pairs
+        (larger, smaller) of candidate nestings that failed that test.
+    """
+
+    order: tuple[str, ...]
+    fits: dict[str, Fit]
+    checks: dict[str, Checks]
+    own: dict[str, Own]
+    verdicts: dict[str, Verdict]
+    contains: dict[str, frozenset[str]]
+    unreachable: tuple[tuple[str, str], ...]
+    claims: tuple[ClaimVerdict, ...]
+    summaries: dict[str, Arrays]
+    likelihoods: dict[str, Arrays]
+
+
+async def judge_variants(flow: Flow) -> Results:
+    """Fit and check all variants and settle the claims."""
+    variants = flow.bench.variants
+    order = tuple(variants.variants)
+    for name in order:
+        flow.progress.start(name, 1 + flow.settings.spent.most_blocks)
+    fits: dict[str, asyncio.Task[Fit]] = {}
+    verdict_ready: dict[str, asyncio.Task[bool]] = {}
+    checks: dict[str, Checks] = {}
+    own: dict[str, Own] = {}
+    confirmed: dict[str, set[str]] = {name: set() for name in order}
+    unreachable: list[tuple[str, str]] = []
+
+    async def keeps(name: str) -> bool:
+        """Judge one variant; whether it, or something it contains, is kept."""
+        fit = await fits[name]
+        smaller = sorted(variants.contains[name], key=order.index)
+        kept_below = await asyncio.gather(*(verdict_ready[s] for s in smaller))
+        shares = await asyncio.gather(*(_share(flow, name, s, await fits[s]) for s in smaller))
+        for s, share in zip(smaller, shares, strict=True):
+            if share >= REACHABLE_SHARE:
+                confirmed[name].add(s)
+            else:
+                unreachable.append((name, s))
+        by_coherence = any(
+            k and s in confirmed[name] for s, k in zip(smaller, kept_below, strict=True)
+        )
+        if not fit.trusted:
+            own[name] = Own(judged=False)
+        elif by_coherence and not flow.settings.spent.check_all:
+            own[name] = Own(judged=True)
+        else:
+            own[name], checks[name] = await _own_outcome(flow, name, fit)
+        flow.progress.finish(name)
+        kept = own[name].judged and not own[name].rejected
+        return kept or by_coherence
+
+    async with asyncio.TaskGroup() as group:
+        for name in order:
+            fits[name] = group.create_task(flow.fit(name))
+        for name in order:
+            verdict_ready[name] = group.create_task(keeps(name))
+    done = {name: task.result() for name, task in fits.items()}
+    contains = _transitive(order, confirmed)
+    alike = await _alike(flow, order, done, contains, own)
+    verdicts = settle(order, contains, own, alike)
+    plain = {name: v.verdict for name, v in verdicts.items()}
+    claims = tuple(judge_claim(c, order, plain, contains) for c in variants.claims)
+    summaries = await _each(flow, done, _summary)
+    likelihoods = await _each(flow, done, _likelihood)
+    return Results(
+        order,
+        done,
+        checks,
+        own,
+        verdicts,
+        contains,
+        tuple(sorted(unreachable)),
+        claims,
+        summaries,
+        likelihoods,
+    )
+
+
+async def _own_outcome(flow: Flow, name: str, fit: Fit) -> tuple[Own, Checks]:
+    found = await flow.check(name, fit)
+    if found.failed_share > FAILED_REPLICATES:
+        return Own(judged=False), found
+    if found.tally is None:
+        return Own(judged=True), found
+    p = found.tally.p_value
+    return Own(True, p, p <= flow.settings.alpha), found
+
+
+async def _share(flow: Flow, larger: str, smaller: str, fit: Fit) -> float:
+    if not np.isfinite(fit.objective):
+        return 1.0
+    fingerprint = digest(flow.fingerprint(larger), flow.fingerprint(smaller))
+    key = f"{larger}/contains-{smaller}"
+    found = await flow.piece(key, fingerprint, tasks.reachable, larger, smaller, fit.best)
+    return float(found["share"])
+
+
+def _transitive(
+    order: tuple[str, ...], confirmed: dict[str, set[str]]
+) -> dict[str, frozenset[str]]:
+    closed: dict[str, frozenset[str]] = {}
+    for name in order:
+        below = set(confirmed[name])
+        for s in confirmed[name]:
+            below |= closed[s]
+        closed[name] = frozenset(below)
+    return closed
+
+
+async def _alike(
+    flow: Flow,
+    order: tuple[str, ...],
+    fits: dict[str, Fit],
+    contains: dict[str, frozenset[str]],
+    own: dict[str, Own],
+) -> list[tuple[str, str]]:
+    """Return pairs, neither within the other, whose best-fit curves cannot be told apart."""
+    candidates = [
+        (a, b)
+        for a, b in combinations(order, 2)
+        if a not in contains[b]
+        and b not in contains[a]
+        and not math.isnan(own[a].p_value)
+        and not math.isnan(own[b].p_value)
+        and abs(fits[a].objective - fits[b].objective) < MATCH_OBJECTIVE
+    ]
+    gaps = await asyncio.gather(
+        *(flow.run(tasks.match, a, fits[a].best, b, fits[b].best) for a, b in candidates)
+    )
+    return [
+        pair for pair, g in zip(candidates, gaps, strict=True) if float(g["gap"]) < tasks.REACH
+    ]
+
+
+async def _each(flow: Flow, fits: dict[str, Fit], make) -> dict[str, Arrays]:  # type: ignore[no-untyped-def]
+    usable = [name for name, fit in fits.items() if fit.chains.shape[1]]
+    made = await asyncio.gather(*(make(flow, name, fits[name]) for name in usable))
+    return dict(zip(usable, made, strict=True))
+
+
+async def _summary(flow: Flow, name: str, fit: Fit) -> Arrays:
+    from ruleout.seeds import generator
+
+    draws = fit.draws(generator(flow.settings.seed, name, "summary draws"), 4000)
+    diagnostics = {
+        "rhat": fit.diagnostics.rhat,
+        "ess_bulk": fit.diagnostics.ess_bulk,
+        "ess_tail": fit.diagnostics.ess_tail,
+    }
+    return await flow.piece(
+        f"{name}/summary",
+        flow.fingerprint(name),
+        tasks.summarise_fit,
+        name,
+        fit.best,
+        draws,
+        diagnostics,
+    )
+
+
+async def _likelihood(flow: Flow, name: str, fit: Fit) -> Arrays:
+    e, s, w, d = fit.chains.shape
+    flat = fit.chains.reshape(e, s * w, d)
+    each = np.linspace(0, s * w - 1, min(250, s * w)).astype(int)
+    thinned = flat[:, each]
+    found = await flow.piece(
+        f"{name}/likelihood", flow.fingerprint(name), tasks.log_likelihood, name, thinned
+    )
+    return {**found, "draws": thinned}
+
+
+def kept(results: Results) -> list[str]:
+    """Return the variants that are kept, in order."""
+    return [n for n in results.order if results.verdicts[n].verdict == KEPT]
