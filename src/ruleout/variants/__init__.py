@@ -1,6 +1,5 @@
 """Variants: every admissible wiring of a mechanism, their nesting, loops and claims."""
 
-from ruleout.variants.variantset import expand
 from ruleout.variants.types import (
     ClaimSplit,
     Contest,
@@ -10,6 +9,7 @@ from ruleout.variants.types import (
     VariantSet,
     Wiring,
 )
+from ruleout.variants.variantset import expand
 
 __all__ = [
     "ClaimSplit",

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from ruleout.errors import InputError, did_you_mean
 from ruleout.mechanism.types import Claim, Edge, Mechanism
-from ruleout.variants.contests import ABSENT, choice_name, matches
+from ruleout.variants.contests import ABSENT, matches
 from ruleout.variants.expansion import where
 from ruleout.variants.types import ClaimSplit, Contest, Loop, Option, Variant
 

@@ -159,7 +159,7 @@ def _wire(mechanism: Mechanism, settled: Mapping[str, Option]) -> Wiring:
         for name, edge in mechanism.edges.items()
         if settled[name].present
     }
-    return Wiring(nodes, edges)
+    return Wiring(nodes, edges, frozenset(mechanism.nodes) - nodes.keys())
 
 
 def expand_wirings(mechanism: Mechanism, contests: Sequence[Contest]) -> list[Draft]:

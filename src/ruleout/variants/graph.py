@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -76,13 +75,14 @@ def _slope_sign(rate: Expr, name: str) -> int:
     return int(np.sign(values.min() + values.max()))
 
 
-def drivers(edge: Edge, nodes: Mapping[str, object]) -> dict[str, int]:
+def drivers(edge: Edge, wiring: Wiring) -> dict[str, int]:
     """Return the nodes that drive an edge, each with the sign of its influence on the rate."""
     if not edge.material:
         return {name: 1 for name, _ in edge.sources}
     if edge.rates:
-        rate = rate_expression(edge, nodes)
-        return {name: _slope_sign(rate, name) for name in nodes if name in symbols(rate)}
+        rate = rate_expression(edge, wiring.names)
+        levels = symbols(rate)
+        return {name: _slope_sign(rate, name) for name in wiring.nodes if name in levels}
     found = {name: 1 for name, _ in edge.sources}
     if edge.reversible or edge.effects[0] == "binds":
         for name, _ in edge.targets:
@@ -99,7 +99,7 @@ def arcs(wiring: Wiring) -> tuple[Arc, ...]:
     found: list[Arc] = []
     for edge in wiring.edges.values():
         for target, push in pushes(edge, wiring).items():
-            for source, drive in drivers(edge, wiring.nodes).items():
+            for source, drive in drivers(edge, wiring).items():
                 sign = push * drive
                 if edge.material and source == target and sign < 0:
                     continue

@@ -156,9 +156,9 @@ class Nesting:
             return False
         for name, pairs in self.reduces.items():
             a, b = larger.choices[name], smaller.choices[name]
-            if a != b and b.present:
-                if (a, b) not in pairs or self._tied_elsewhere(big.edges[name], small):
-                    return False
+            changed = a != b and b.present
+            if changed and ((a, b) not in pairs or self._tied_elsewhere(big.edges[name], small)):
+                return False
         return all(self._drops(larger, smaller, n) for n in big.edges.keys() - small.edges.keys())
 
     def relation(self, drafts: Sequence[Draft]) -> list[frozenset[int]]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Collection
 from functools import lru_cache
 
-from ruleout.expressions import Expr, substitute, sym, symbols
+from ruleout.expressions import Expr, parse, substitute, sym, symbols
 from ruleout.mechanism.types import Edge
 
 
@@ -26,8 +26,6 @@ def rate_expression(edge: Edge, nodes: Collection[str]) -> Expr:
 
 @lru_cache(maxsize=4096)
 def _read(edge: str, text: str, nodes: frozenset[str]) -> Expr:
-    from ruleout.expressions import parse
-
     rate = parse(text)
     own = symbols(rate) - nodes - {"time"}
     (full,) = substitute([rate], {name: sym(f"{edge}.{name}") for name in own if "." not in name})

@@ -41,10 +41,20 @@ class Contest:
 
 @dataclass(frozen=True, slots=True)
 class Wiring:
-    """A graph with nothing left in dispute: every edge has one effect, one law, one rate."""
+    """A graph with nothing left in dispute: every edge has one effect, one law, one rate.
+
+    ``absent`` names the contested nodes that are no part of it: rate expressions that speak of
+    them find nothing there.
+    """
 
     nodes: Mapping[str, Node]
     edges: Mapping[str, Edge]
+    absent: frozenset[str] = frozenset()
+
+    @property
+    def names(self) -> frozenset[str]:
+        """Every name that means an amount, present or not."""
+        return self.absent.union(self.nodes)
 
 
 @dataclass(frozen=True, slots=True)

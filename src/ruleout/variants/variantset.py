@@ -69,7 +69,7 @@ def expand(mechanism: Mechanism, experiments: Experiments) -> VariantSet:
         contains={names[i]: frozenset(names[j] for j in nested[i]) for i in order},
         neighbours={
             names[i]: {
-                choice: tuple(sorted((names[j] for j in js))) for choice, js in near[i].items()
+                choice: tuple(sorted(names[j] for j in js)) for choice, js in near[i].items()
             }
             for i in order
         },
