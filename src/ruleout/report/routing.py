@@ -24,7 +24,7 @@ _T: Final = np.linspace(0.0, 1.0, _SAMPLES)
 _BASIS: Final = np.stack(
     [(1 - _T) ** 3, 3 * _T * (1 - _T) ** 2, 3 * _T**2 * (1 - _T), _T**3], axis=1
 )
-_BENDS: Final = (0.0, 3.0, 6.0, 9.0, 12.5, 16.5, 21.0, 27.0)
+_BENDS: Final = (4.0, 6.5, 9.0, 12.5, 16.5, 21.0, 27.0)
 GAP: Final = 0.7
 """Room between a stroke's end and the outline of what it points at."""
 
@@ -53,61 +53,54 @@ def bezier(curve: Array, t: Array | float) -> Array:
     )
 
 
-def part(curve: Array, start: float, stop: float) -> Array:
-    """Return the control points of the curve between two of its parameters."""
+def part(curves: Array, start: Array | float, stop: Array | float) -> Array:
+    """Return the control points of curves (..., 4, 2) between two of their parameters (...)."""
 
-    def split(points: Array, t: float) -> tuple[Array, Array]:
-        left, right = [points[0]], [points[-1]]
-        while len(points) > 1:
-            points = points[:-1] * (1 - t) + points[1:] * t
-            left.append(points[0])
-            right.append(points[-1])
-        return np.array(left), np.array(right[::-1])
+    def blossom(*at: Array | float) -> Array:
+        points = curves
+        for t in at:
+            t = np.asarray(t, float)[..., None, None]
+            points = points[..., :-1, :] * (1 - t) + points[..., 1:, :] * t
+        return np.asarray(points[..., 0, :])
 
-    _, tail = split(curve, start)
-    head, _ = split(tail, (stop - start) / (1 - start) if start < 1 else 0.0)
-    return head
+    corners = ((start, start, start), (start, start, stop), (start, stop, stop), (stop,) * 3)
+    return np.stack([blossom(*c) for c in corners], axis=-2)
 
 
-def _docks(point: Point | None) -> list[Array]:
+def _docks(point: Point | None, flow: int) -> list[Array]:
     if point is None or point.kind != "node":
         return [np.zeros(2)]
-    w, h = point.size
-    return [
-        np.array(offset)
-        for offset in ((0.0, 0.0), (-w / 4, 0.0), (w / 4, 0.0), (0.0, -h / 4), (0.0, h / 4))
-    ]
+    along = np.eye(2)[flow] * point.size[flow]
+    return [along * share for share in (0.0, -0.27, 0.27)]
 
 
 def _candidates(
-    a: Array, b: Array, source: Point, target: Point | None, backward: bool
-) -> NDArray[np.float64]:
+    a: Array, b: Array, source: Point, target: Point | None, flow: int, backward: bool
+) -> Array:
     """Return control points of all routes from centre ``a`` to centre ``b``: (C, 4, 2)."""
     routes: list[Array] = []
     if target is source:
         w, h = source.size
         for side in (-1.0, 1.0):
-            for shift in (-w / 4, 0.0, w / 4):
-                out = side * (h / 2 + 11.0)
-                path = np.array([(-2.2, 0.0), (-5.5, out), (5.5, out), (2.2, 0.0)])
+            for shift in (0.0, -w / 4, w / 4):
+                out = side * (h / 2 + 9.0)
+                path = np.array([(-1.6, 0.0), (-5.0, out), (5.0, out), (1.6, 0.0)])
                 routes.append(a + np.array([shift, 0.0]) + path)
         return np.array(routes)
-    for start in _docks(source):
-        for stop in _docks(target):
+    if not backward:
+        across = np.eye(2)[flow] * (b - a) / 2
+        routes = [np.linspace(a, b, 4), np.array([a, a + across, b - across, b])]
+    for start in _docks(source, flow):
+        for stop in _docks(target, flow):
             p, q = a + start, b + stop
             chord = q - p
             length = float(np.hypot(*chord)) or 1.0
             normal = np.array([-chord[1], chord[0]]) / length
             for bend in _BENDS:
-                if backward and bend < 6.0:
-                    continue
-                for side in (1.0, -1.0) if bend else (1.0,):
+                for side in (1.0, -1.0):
                     lift = normal * side * bend * 4 / 3
                     near, far = p + 0.2 * chord + lift, p + 0.8 * chord + lift
                     routes.append(np.array([p, near, far, q]))
-            if not backward:
-                flats = (np.array([chord[0], 0.0]), np.array([0.0, chord[1]]))
-                routes += [np.array([p, p + f / 2, q - f / 2, q]) for f in flats]
     return np.array(routes)
 
 
@@ -116,26 +109,20 @@ def _inside(points: Array, centre: Array, size: tuple[float, float], margin: flo
     return np.asarray((np.abs(points - centre) <= half).all(axis=-1))
 
 
-def _clip(
-    curves: Array, ends: Sequence[tuple[Array, tuple[float, float]]]
-) -> tuple[Array, NDArray[np.bool_]]:
-    """Cut curves (C, 4, 2) at the outlines of what they join; say which are left with anything."""
-    clipped, good = curves.copy(), np.ones(len(curves), bool)
+def _clip(curves: Array, ends: Sequence[tuple[Array, tuple[float, float]]]) -> Array:
+    """Cut curves (C, 4, 2) at the outlines of what they join, leaving out those within them."""
     fine = np.linspace(0, 1, 129)
-    for i, curve in enumerate(curves):
-        xy = bezier(curve, fine)
-        (a, size_a), (b, size_b) = ends
-        first = np.flatnonzero(~_inside(xy, a, size_a, GAP * 0.4))
-        last = np.flatnonzero(~_inside(xy, b, size_b, GAP))
-        if not len(first) or not len(last) or last[-1] - first[0] < 8:
-            good[i] = False
-            continue
-        start, stop = first[0], last[-1]
-        clipped[i] = part(curve, fine[start], fine[stop])
-    return clipped, good
+    xy = bezier(curves[:, :, None, :].swapaxes(0, 1), fine)
+    (a, size_a), (b, size_b) = ends
+    first = np.argmax(~_inside(xy, a, size_a, GAP * 0.4), axis=1)
+    last = len(fine) - 1 - np.argmax(~_inside(xy, b, size_b, GAP)[:, ::-1], axis=1)
+    good = last - first >= 6
+    if not good.any():
+        return curves
+    return part(curves[good], fine[first[good]], fine[last[good]])
 
 
-def _own_price(xy: Array, backward: bool, box: Array) -> Array:
+def _own_price(xy: Array, flow: int, backward: bool, box: Array) -> Array:
     """Return the price of each route for its own shape."""
     steps = np.hypot(*np.moveaxis(np.diff(xy, axis=1), -1, 0))
     length = steps.sum(axis=1)
@@ -146,11 +133,21 @@ def _own_price(xy: Array, backward: bool, box: Array) -> Array:
         way = tip - before
         way /= np.maximum(np.hypot(*way.T), 1e-9)[:, None]
         price += 6.0 * (1 - np.abs(way).max(axis=1))
-    middle = xy[:, _SAMPLES // 2, 1] - (xy[:, 0, 1] + xy[:, -1, 1]) / 2
+    across = xy[:, :, 1 - flow]
+    # Against the flow on one side of it, along it on the other.
+    middle = across[:, _SAMPLES // 2] - (across[:, 0] + across[:, -1]) / 2
     wrong_side = middle < -1.0 if backward else middle > 1.0
-    price += 2.5 * wrong_side
+    price += 8.0 * wrong_side
     outside = np.maximum(box[0] - xy, 0) + np.maximum(xy - box[1], 0)
     return np.asarray(price + 0.4 * outside.max(axis=(1, 2)))
+
+
+def _price_at_corners(ends: Array, centre: Array, size: tuple[float, float]) -> Array:
+    """Return the price of docking close to a corner of a node's box."""
+    if max(size) < 5.0:
+        return np.zeros(len(ends))
+    to_corner = np.hypot(*(np.abs(ends - centre) - np.array(size) / 2).T)
+    return np.asarray(5.0 * np.maximum(0.0, 1 - to_corner / 2.5))
 
 
 def _price_against_nodes(
@@ -168,7 +165,7 @@ def _price_against_strokes(xy: Array, others: Sequence[Array]) -> Array:
     """Return the price of coming close to the sampled strokes ``others``."""
     if not others:
         return np.zeros(len(xy))
-    near = np.concatenate(others)
+    near = np.concatenate([other[::2] for other in others])
     d2 = ((xy[:, :, None, :] - near[None, None]) ** 2).sum(axis=-1)
     close = np.exp(-d2 / 1.8**2).max(axis=2).sum(axis=1)
     price = 4.0 * close
@@ -236,11 +233,11 @@ def _options(
         target, b = points[piece.target], at[piece.target]
         size = target.size
     backward = not piece.onto and target is not source and bool(b[flow] < a[flow] - 1.0)
-    curves = _candidates(a, b, source, target, backward)
-    curves, good = _clip(curves, ((a, source.size), (b, size)))
-    if good.any():
-        curves = curves[good]
+    curves = _candidates(a, b, source, target, flow, backward)
+    curves = _clip(curves, ((a, source.size), (b, size)))
     xy = np.einsum("tk,ckd->ctd", _BASIS, curves)
-    price = _own_price(xy, backward, box)
+    price = _own_price(xy, flow, backward, box)
+    price += _price_at_corners(xy[:, 0], a, source.size)
+    price += _price_at_corners(xy[:, -1], b, size)
     price += _price_against_nodes(xy, points, at, {piece.source, piece.target})
     return curves, xy, price

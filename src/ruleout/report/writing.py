@@ -110,5 +110,8 @@ def write_report(
     InputError
         If ``style`` cannot be used.
     """
+    from ruleout.report.html import html_report
+
     folder.mkdir(parents=True, exist_ok=True)
+    write_aside(folder / "report.html", html_report(judgement, case))
     write_figures(judgement, case, folder / "figures", style=style, progress=progress)

@@ -1,0 +1,237 @@
+"""``report.html``: one file that needs nothing else, from the claims down to the evidence."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Callable, Mapping
+from functools import cache
+from importlib.resources import files
+from typing import TYPE_CHECKING, Any, Final
+
+import pandas as pd
+from markupsafe import Markup
+
+from ruleout.report.charts import check_chart, fit_chart, marginal_chart
+from ruleout.report.fit_figure import conditions_in
+from ruleout.report.panels import panels_of, value_range
+from ruleout.report.picture import Picture, choices_of, lay_out
+from ruleout.report.style import COLOURS, VERDICT_SIGNS, condition_styles
+from ruleout.report.svg import GraphSymbols
+from ruleout.report.words import (
+    CLAIM_VERDICTS,
+    DOSING_CAUTION,
+    KEPT_MEANS,
+    VERDICTS,
+    by_verdict,
+    check_words,
+    looks_like_dosing,
+    number_text,
+    p_text,
+    split_names,
+)
+from ruleout.verdicts.types import Judgement
+
+if TYPE_CHECKING:
+    from jinja2 import Environment
+
+    from ruleout.case import Case
+
+BUDGET: Final = 3_600_000
+"""Characters that the evidence of all variants may take; the rest stays in the tables."""
+MOST_POINTS: Final = 60
+FEWEST_POINTS: Final = 16
+CLAIM_SIGNS: Final[Mapping[str, str]] = {
+    "needed": "✔",
+    "excluded": "✕",
+    "not_needed": "○",
+    "undecided": "?",
+    "nothing_fits": "!",
+}
+
+
+def _file(name: str) -> str:
+    return (files("ruleout.report") / "templates" / name).read_text(encoding="utf-8")
+
+
+@cache
+def environment() -> Environment:
+    """Return the template environment: everything is escaped unless it was drawn here."""
+    from jinja2 import Environment, FunctionLoader, StrictUndefined
+
+    made = Environment(
+        loader=FunctionLoader(_file),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    made.filters.update(
+        p=p_text, number=number_text, names=split_names, check=check_words, missing=pd.isna
+    )
+    made.globals.update(
+        verdict_words=VERDICTS,
+        verdict_signs=VERDICT_SIGNS,
+        claim_words=CLAIM_VERDICTS,
+        claim_signs=CLAIM_SIGNS,
+        colours=list(enumerate(COLOURS)),
+    )
+    return made
+
+
+def render(template: str, **values: Any) -> str:
+    """Return a page with its style and script inside, forbidding it anything from elsewhere."""
+    script = _file("report.js")
+    digest = base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()
+    page = environment().get_template(template)
+    return page.render(
+        style=Markup(_file("report.css")),
+        script=Markup(script),
+        script_hash=digest,
+        **values,
+    )
+
+
+def html_report(judgement: Judgement, case: Case) -> str:
+    """Return the page of a judged case.
+
+    Parameters
+    ----------
+    judgement : Judgement
+    case : Case
+        For its mechanism's graph and its experiments.
+    """
+    picture, small = lay_out(case.mechanism), lay_out(case.mechanism, compact=True)
+    stamps = GraphSymbols(small, "s")
+    rows = [
+        {
+            **row,
+            "edges": split_names(row["edges"]),
+            "flags": split_names(row["flags"]),
+            "graph": stamps.draw(choices_of(row["choices"]), _graph_label(row["edges"])),
+        }
+        for row in by_verdict(judgement.variants).to_dict("records")
+    ]
+    evidence, left_out = _evidence(judgement, rows)
+    return render(
+        "judgement.html",
+        meta=judgement.meta,
+        claims=judgement.claims.to_dict("records"),
+        rows=rows,
+        graph=GraphSymbols(picture, "m").draw_with_letters(
+            f"Graph of {case.mechanism.title} with its contested parts dashed"
+        ),
+        letters=picture.letters,
+        contested=list(picture.letters),
+        stamps=stamps.definitions(),
+        evidence=evidence,
+        left_out=left_out,
+        findings=_findings(judgement, ""),
+        abbreviated=_abbreviated(small),
+        held_out=[r for r in rows if not pd.isna(r["held_out_p"])],
+        kept_means=KEPT_MEANS,
+        caution=DOSING_CAUTION if looks_like_dosing(case.experiments) else "",
+        counts={v: int((judgement.variants["verdict"] == v).sum()) for v in VERDICTS},
+    )
+
+
+def _graph_label(edges: str) -> str:
+    present = ", ".join(split_names(edges))
+    return f"Graph with {present}" if present else "Graph without any contested edge"
+
+
+def _abbreviated(picture: Picture) -> list[tuple[str, str]]:
+    """Return the short forms used in the small graphs, where they differ from the names."""
+    pairs = [(p.lines[0], p.name) for p in picture.points if p.kind == "node"]
+    return [(short, name) for short, name in pairs if short != name]
+
+
+def _findings(judgement: Judgement, variant: str) -> list[dict[str, Any]]:
+    findings = judgement.findings
+    return list(findings[findings["variant"] == variant].to_dict("records"))
+
+
+def _evidence(judgement: Judgement, rows: list[dict[str, Any]]) -> tuple[list[Markup], list[str]]:
+    """Return the evidence of each variant, and the names of those that would make it too large."""
+    template = environment().get_template("evidence.html")
+    styles = condition_styles(conditions_in(judgement))
+    curves = judgement.curves.groupby(["variant", "condition", "readout"]).ngroups
+    # About 36 characters for a time's three values.
+    most_points = int(min(MOST_POINTS, max(FEWEST_POINTS, 0.6 * BUDGET / (36 * max(curves, 1)))))
+    tables = _by_variant(judgement)
+    done: list[Markup] = []
+    size = 0
+    for i, row in enumerate(rows):
+        page = template.render(
+            row=row,
+            meta=judgement.meta,
+            fits=_fits(judgement, row["variant"], styles, most_points),
+            checks=_checks(
+                tables("checks", row["variant"]),
+                tables("replicates", row["variant"]),
+                judgement.meta["alpha"],
+            ),
+            parameters=_parameters(
+                tables("parameters", row["variant"]), tables("quantiles", row["variant"])
+            ),
+            equations=judgement.equations.get(row["variant"], {}),
+            findings=_findings(judgement, row["variant"]),
+        )
+        size += len(page)
+        if done and size > BUDGET:
+            return done, [r["variant"] for r in rows[i:]]
+        done.append(Markup(page))
+    return done, []
+
+
+def _by_variant(judgement: Judgement) -> Callable[[str, str], pd.DataFrame]:
+    groups = {
+        name: dict(iter(getattr(judgement, name).groupby("variant", sort=False)))
+        for name in ("checks", "replicates", "parameters", "quantiles")
+    }
+
+    def rows(table: str, variant: str) -> pd.DataFrame:
+        whole: pd.DataFrame = getattr(judgement, table)
+        return groups[table].get(variant, whole.iloc[:0])
+
+    return rows
+
+
+def _fits(
+    judgement: Judgement,
+    variant: str,
+    styles: Mapping[str, tuple[str, str]],
+    most_points: int,
+) -> list[dict[str, Any]]:
+    """Return the panels of a variant grouped by readout."""
+    panels = panels_of(judgement, variant)
+    groups = []
+    for readout in dict.fromkeys(p.readout for p in panels):
+        mine = [p for p in panels if p.readout == readout]
+        limits = value_range(mine)
+        charts = [(p, fit_chart(p, limits, styles, most_points)) for p in mine]
+        groups.append({"readout": readout, "charts": charts})
+    return groups
+
+
+def _checks(checks: pd.DataFrame, replicates: pd.DataFrame, alpha: float) -> list[dict[str, Any]]:
+    """Return the checks, those that count first, with their charts."""
+    rows = []
+    for row in checks.sort_values("counts_for_verdict", ascending=False, kind="stable").to_dict(
+        "records"
+    ):
+        counts = bool(row["counts_for_verdict"])
+        draws = replicates["value"][replicates["check"] == row["check"]].to_numpy(float)
+        fails = bool(row["p_value"] <= alpha)
+        chart = check_chart(row, draws if counts else draws[:0], fails)
+        rows.append({**row, "counts": counts, "fails": fails, "chart": chart})
+    return rows
+
+
+def _parameters(parameters: pd.DataFrame, quantiles: pd.DataFrame) -> list[dict[str, Any]]:
+    rows = []
+    for row in parameters.to_dict("records"):
+        mine = quantiles[quantiles["parameter"] == row["parameter"]]
+        positive = bool((mine[["posterior", "prior"]] > 0).all(axis=None))
+        rows.append({**row, "chart": marginal_chart(mine, logarithmic=positive)})
+    return rows
