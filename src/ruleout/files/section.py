@@ -172,15 +172,15 @@ class Section:
             )
         return value
 
-    def number_or(self, key: str, word: str, default: float) -> float | str:
-        """Return a number, or ``word`` where that was given."""
-        value = self.values.get(key, default)
-        if value == word:
-            return word
-        if isinstance(value, str):
-            near = did_you_mean(value, [word])
-            self.fail(key, f"{describe(value)} was given; a number or '{word}' is expected{near}")
-        return self.as_number(key, value)
+    def time(self, key: str) -> float:
+        """Return a time of at least 0; ``inf`` is the steady state."""
+        if key not in self.values:
+            self.fail(key, f"'{key}' is missing; give a time of at least 0, or inf")
+        return self.as_time(key, self.values[key])
+
+    def as_time(self, key: str, value: object) -> float:
+        """Return ``value`` as a time of at least 0 or ``inf``."""
+        return math.inf if value == math.inf else self.as_number(key, value, low=0.0)
 
     def names(self, key: str, *, single: bool = False) -> tuple[str, ...]:
         """Return a list of distinct names (with ``single``, one name alone is a list of one)."""
@@ -202,12 +202,7 @@ class Section:
         for pair in value:
             if not isinstance(pair, list) or len(pair) != 2:
                 self.fail(key, f"{describe(pair)} was given; a pair [time, {what}] is expected")
-            if not (_finite(pair[0]) and pair[0] >= 0):
-                self.fail(
-                    key,
-                    f"time {describe(pair[0])} was given; a finite time of at least 0 is expected",
-                )
-            point = (float(pair[0]), self.as_number(key, pair[1]))
+            point = (self.as_number(key, pair[0], low=0.0), self.as_number(key, pair[1]))
             if points and point[0] <= points[-1][0]:
                 self.fail(key, f"time {point[0]:g} follows {points[-1][0]:g}; times must increase")
             points.append(point)
