@@ -150,11 +150,9 @@ class Assembly:
         return self.laws.hill(s, self._half(edge), hill)
 
     def _modified(self, term: Expr, modifier: Edge) -> Expr:
-        """Return ``term`` under an ``onto`` edge: times 1 + strength f, times f, or divided."""
+        """Return ``term`` under an ``onto`` edge: times 1 + strength f, or divided."""
         if divides(modifier):
             return term / self._divisor(modifier)
-        if modifier.necessary:
-            return term * self._factor(modifier)
         return term * (1.0 + self._additive(modifier))
 
     def _scaled(self, edge: Edge, term: Expr) -> Expr:

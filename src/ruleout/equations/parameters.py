@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Collection, Iterable, Iterator
 
-from ruleout.equations.types import Parameter
+from ruleout.equations.types import Parameter, ParameterKind
 from ruleout.expressions import ZERO, Expr, ordered, substitute
 from ruleout.mechanism.types import Edge, Mechanism, Node
 from ruleout.variants import Wiring
@@ -88,7 +88,9 @@ def _of_edge(edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units) -> 
         yield Parameter(f"{name}.delay", "delay", units.time)
 
 
-def _strength(edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units) -> tuple[str, str]:
+def _strength(
+    edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units
+) -> tuple[ParameterKind, str]:
     """Return kind and unit of the strength of an additive edge."""
     source = mechanism.nodes[edge.sources[0][0]]
     below = [units.of_node(source)] if edge.laws[0] == "linear" else []

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from ruleout.errors import InputError, did_you_mean
 from ruleout.mechanism.types import Claim, Edge, Mechanism
 from ruleout.variants.contests import ABSENT, matches
 from ruleout.variants.expansion import where
+from ruleout.variants.loops import say_feedback
 from ruleout.variants.types import ClaimSplit, Contest, Loop, Option, Variant
 
 
@@ -44,6 +45,11 @@ def say_edge(edge: Edge, option: Option) -> str:
     return clause
 
 
+def _say_effects(edge: Edge, options: Sequence[Option]) -> str:
+    effects = dict.fromkeys(option.effect for option in options)
+    return " or ".join(say_edge(edge, Option(True, effect)) for effect in effects)
+
+
 def _law_phrase(option: Option) -> str:
     if option.rate:
         return f" with the rate '{option.rate}'"
@@ -65,33 +71,18 @@ def _choice_claims(
     drafts: list[_Draft] = []
     everywhere = len(holds("present")) == len(variants)
     if ABSENT in contest.options or not everywhere:
-        effects = list(dict.fromkeys(o.effect for o in present))
-        clause = " or ".join(say_edge(edge, Option(True, effect)) for effect in effects)
-        drafts.append(_Draft(contest.name, clause, holds("present"), 0))
+        drafts.append(_Draft(contest.name, _say_effects(edge, present), holds("present"), 0))
     for part in ("effect", "law", "rate"):
         values = list(dict.fromkeys(getattr(o, part) for o in present))
         if len(values) < 2:
             continue
         for value in values:
-            example = next(o for o in present if getattr(o, part) == value)
-            clause = say_edge(edge, example)
+            alike = [o for o in present if getattr(o, part) == value]
+            clause = _say_effects(edge, alike)
             if part != "effect":
-                clause += _law_phrase(example)
+                clause += _law_phrase(alike[0])
             drafts.append(_Draft(f"{contest.name}={value}", clause, holds(value), 0))
     return drafts
-
-
-def say_loop(loop: Loop, edges: Mapping[str, Edge]) -> str:
-    """Return a feedback loop as a chain of arrows: ``a -> b -| a``.
-
-    A step by an edge onto another one, or of no fixed sign, is drawn ``-o``.
-    """
-    steps = []
-    for node, name in zip(loop.nodes, loop.edges, strict=True):
-        edge = edges[name]
-        arrow = "-o" if edge.onto else "-|" if edge.effects[0] == "inhibits" else "->"
-        steps.append(f"{node} {arrow} ")
-    return "".join(steps) + loop.nodes[0]
 
 
 def _loop_claims(variants: Sequence[Variant]) -> list[_Draft]:
@@ -111,7 +102,7 @@ def _loop_claims(variants: Sequence[Variant]) -> list[_Draft]:
         if name in names:
             name += f"[{'+'.join(loop.edges)}:{word}]"
         names.add(name)
-        text = f"the {word} feedback loop {say_loop(loop, having[0].wiring.edges)} is closed"
+        text = f"the {word} feedback loop {say_feedback(loop, having[0].wiring.edges)} is closed"
         drafts.append(_Draft(name, text, frozenset(v.name for v in having), 2))
     return drafts
 

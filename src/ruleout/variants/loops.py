@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from itertools import islice, product
 
 import networkx as nx
 
+from ruleout.mechanism.types import Edge
 from ruleout.variants.graph import Arc
 from ruleout.variants.types import Loop
 
@@ -127,3 +128,16 @@ def find_loops(arc_sets: Sequence[Sequence[Arc]]) -> list[tuple[Loop, ...]]:
         tuple(loop for loop in ranked if any(mask & h == mask for mask in found[loop]))
         for h in have
     ]
+
+
+def say_feedback(loop: Loop, edges: Mapping[str, Edge]) -> str:
+    """Return a feedback loop as a chain of arrows: ``a -> b -| a``.
+
+    A step by an edge onto another one is drawn ``-o``: its sign depends on that one.
+    """
+    steps = []
+    for node, name in zip(loop.nodes, loop.edges, strict=True):
+        edge = edges[name]
+        arrow = "-o" if edge.onto else "-|" if edge.effects[0] == "inhibits" else "->"
+        steps.append(f"{node} {arrow} ")
+    return "".join(steps) + loop.nodes[0]
