@@ -17,9 +17,10 @@ from dataclasses import dataclass, field
 
 from ruleout.equations.laws import Laws
 from ruleout.expressions import ONE, ZERO, Expr, const, substitute, sym
+from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge, Node
 from ruleout.variants import Wiring
-from ruleout.variants.contests import divides, has_half, has_hill
+from ruleout.variants.contests import has_half, has_hill
 from ruleout.variants.graph import net_amounts
 from ruleout.variants.rates import rate_expression
 
@@ -151,7 +152,7 @@ class Assembly:
 
     def _modified(self, term: Expr, modifier: Edge) -> Expr:
         """Return ``term`` under an ``onto`` edge: times 1 + strength f, or divided."""
-        if divides(modifier):
+        if divides(modifier, modifier.effects[0]):
             return term / self._divisor(modifier)
         return term * (1.0 + self._additive(modifier))
 
@@ -213,7 +214,7 @@ class Assembly:
             if edge.material or edge.onto is not None or edge.targets[0][0] != node.name:
                 continue
             side = gain if edge.on == "gain" else loss
-            if divides(edge):
+            if divides(edge, edge.effects[0]):
                 side.divisors.append(self._divisor(edge))
             elif edge.necessary:
                 side.factors.append(self._factor(edge))

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge
 from ruleout.variants import Wiring
-from ruleout.variants.contests import divides, onto_half
+from ruleout.variants.contests import onto_half
 
 
 def _name(edges: list[Edge]) -> str:
@@ -37,12 +38,12 @@ def assumptions(wiring: Wiring) -> tuple[str, ...]:
         )
     additive: dict[str, list[Edge]] = {}
     for edge in regulating:
-        if edge.onto is None and not edge.necessary and not divides(edge):
+        if edge.onto is None and not edge.necessary and not divides(edge, edge.effects[0]):
             additive.setdefault(f"{edge.targets[0][0]}, {edge.on}", []).append(edge)
     for side, group in additive.items():
         if len(group) > 1:
             said.append(f"Additive and independent ({side}): {_name(group)}.")
-    dividing = [e for e in regulating if divides(e) and e.onto is None]
+    dividing = [e for e in regulating if divides(e, e.effects[0]) and e.onto is None]
     if dividing:
         said.append(
             f"Each of these divides a total rate, without competing with the others: "
@@ -51,10 +52,14 @@ def assumptions(wiring: Wiring) -> tuple[str, ...]:
     necessary = [e for e in regulating if e.necessary]
     if necessary:
         said.append(f"Nothing happens at the target without the source: {_name(necessary)}.")
-    linear = [e for e in regulating if e.laws[0] == "linear" and not divides(e)]
+    linear = [e for e in regulating if e.laws[0] == "linear" and not divides(e, e.effects[0])]
     if linear:
         said.append(f"Far from saturation, in proportion to the source: {_name(linear)}.")
-    enzymes = [e for e in edges if e.laws[0] == "saturating" and not e.rates and not divides(e)]
+    enzymes = [
+        e
+        for e in edges
+        if e.laws[0] == "saturating" and not e.rates and not divides(e, e.effects[0])
+    ]
     enzymes += [e for e in regulating if e.acts_on == "saturating" and e not in enzymes]
     if enzymes:
         said.append(

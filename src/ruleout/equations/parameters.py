@@ -6,9 +6,10 @@ from collections.abc import Collection, Iterable, Iterator
 
 from ruleout.equations.types import Parameter, ParameterKind
 from ruleout.expressions import ZERO, Expr, ordered, substitute
+from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge, Mechanism, Node
 from ruleout.variants import Wiring
-from ruleout.variants.contests import divides, has_half, has_hill, onto_edge
+from ruleout.variants.contests import has_half, has_hill, onto_edge
 from ruleout.variants.rates import rate_expression
 
 
@@ -74,7 +75,7 @@ def _of_edge(edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units) -> 
         yield from _of_rate(edge, wiring)
     elif edge.material:
         yield from _of_turnover(edge, mechanism, units)
-    elif not divides(edge) and not edge.necessary:
+    elif not divides(edge, edge.effects[0]) and not edge.necessary:
         yield Parameter(f"{name}.strength", *_strength(edge, wiring, mechanism, units))
     if has_half(edge):
         unit = units.of_node(source)

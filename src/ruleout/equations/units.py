@@ -17,9 +17,9 @@ from ruleout.equations.starts import node_start
 from ruleout.equations.types import Model
 from ruleout.experiments.types import Experiments
 from ruleout.expressions import ZERO, Expr, ordered, substitute
+from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Mechanism, Prior, Tied
 from ruleout.variants import VariantSet
-from ruleout.variants.contests import divides
 
 Form = Mapping[str, float]
 """A linear form in the unknown exponents."""
@@ -173,7 +173,7 @@ def _candidates(node: str, variant_set: VariantSet, experiments: Experiments) ->
         and edge.on == "gain"
         and edge.name not in contested
         and not edge.necessary
-        and not divides(edge)
+        and not divides(edge, edge.effects[0])
     ]
     found = [*strengths, f"{node}.basal"]
     return [name for name in found if name not in own and name not in mechanism.priors]

@@ -4,29 +4,19 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from ruleout.mechanism.types import Edge, Effect, Mechanism
+from ruleout.mechanism.parameters import divides
+from ruleout.mechanism.types import Edge, Mechanism
 from ruleout.variants.types import Contest, Option
 
 ABSENT = Option(False)
 PRESENT = Option(True)
 
 
-def divides(edge: Edge, effect: Effect | None = None) -> bool:
-    """Return whether a regulating edge acts as a factor ``1 / (1 + (s/half)^hill)``.
-
-    Inhibition of the gain (or onto another edge) and stimulation through the loss divide; the
-    others add a term.
-    """
-    helps = (effect or edge.effects[0]) == "stimulates"
-    through_loss = edge.on == "loss" and edge.onto is None
-    return not edge.material and helps == through_loss
-
-
 def has_half(edge: Edge) -> bool:
     """Return whether a settled edge carries a parameter ``EDGE.half``."""
     if edge.rates or edge.effects[0] == "binds":
         return False
-    return edge.laws[0] != "linear" or divides(edge)
+    return edge.laws[0] != "linear" or divides(edge, edge.effects[0])
 
 
 def has_hill(edge: Edge) -> bool:
@@ -101,7 +91,8 @@ def matches(edge: Edge | None, option: Option, label: str) -> bool:
     if label in (option.effect, option.rate, option.law, str(option)):
         return True
     alike = {"linear", "saturating"}
-    return edge is not None and divides(edge, option.effect) and {option.law, label} == alike
+    dividing = edge is not None and option.effect is not None and divides(edge, option.effect)
+    return dividing and {option.law, label} == alike
 
 
 def choice_name(contest: Contest, option: Option) -> str:

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Collection, Mapping, Sequence
 
+from ruleout.errors import InputError
 from ruleout.expressions import ZERO, substitute, symbols
+from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge, Fixed, Mechanism, Prior, Tied
-from ruleout.variants.contests import divides, matches, onto_edge, settle
-from ruleout.variants.expansion import Draft
+from ruleout.variants.contests import matches, onto_edge, settle
+from ruleout.variants.expansion import Draft, where
 from ruleout.variants.rates import rate_expression
 from ruleout.variants.types import Contest, Option, Wiring
 
@@ -37,7 +39,7 @@ def strengths(edge: Edge, nodes: Collection[str]) -> tuple[str, ...] | None:
         return (f"{name}.rate", f"{name}.release")
     if edge.material:
         return (f"{name}.rate", f"{name}.rate_back") if edge.reversible else (f"{name}.rate",)
-    if divides(edge):
+    if divides(edge, edge.effects[0]):
         return (f"{name}.half",)
     return None if edge.necessary else (f"{name}.strength",)
 
@@ -64,7 +66,7 @@ class Nesting:
             if isinstance(prior, Tied):
                 self.followers.setdefault(prior.to, set()).add(name.split(".", 1)[0])
         self.reduces = {
-            contest.name: self._reductions(mechanism.edges[contest.name], contest)
+            contest.name: self._reductions(mechanism, contest)
             for contest in contests
             if contest.name in mechanism.edges
         }
@@ -80,7 +82,7 @@ class Nesting:
             return False
         high, low = _RANK[larger.law], _RANK[smaller.law]
         one = settle(edge, larger)
-        if divides(one):
+        if divides(one, one.effects[0]):
             low = max(low, 1)
         if high <= low:
             return False
@@ -93,9 +95,9 @@ class Nesting:
             return scale is not None and self._movable((f"{edge.name}.half", *scale))
         return True
 
-    def _reductions(self, edge: Edge, contest: Contest) -> set[tuple[Option, Option]]:
+    def _reductions(self, mechanism: Mechanism, contest: Contest) -> set[tuple[Option, Option]]:
         """Return pairs of options (larger, smaller), closed under going on from one to the next."""
-        options = contest.options
+        edge, options = mechanism.edges[contest.name], contest.options
         pairs = {
             (a, b)
             for a in options
@@ -114,6 +116,12 @@ class Nesting:
             into = [a for a in options if (a, middle) in pairs]
             onward = [b for b in options if (middle, b) in pairs]
             pairs |= {(a, b) for a in into for b in onward if a != b}
+        for a, b in pairs:
+            if (b, a) in pairs:
+                raise InputError(
+                    f"'{a}' and '{b}' would contain each other; say which is the larger one",
+                    where=where(mechanism, f"edge.{edge.name}.contains"),
+                )
         return pairs
 
     def _fades(self, edge: Edge) -> bool:
