@@ -54,6 +54,11 @@ def _file(name: str) -> str:
     return (files("ruleout.report") / "templates" / name).read_text(encoding="utf-8")
 
 
+def _breakable(names: list[str]) -> Markup:
+    """Return names that may be broken after their underscores."""
+    return Markup(", ").join(Markup("_<wbr>").join(name.split("_")) for name in names)
+
+
 @cache
 def environment() -> Environment:
     """Return the template environment: everything is escaped unless it was drawn here."""
@@ -67,7 +72,12 @@ def environment() -> Environment:
         lstrip_blocks=True,
     )
     made.filters.update(
-        p=p_text, number=number_text, names=split_names, check=check_words, missing=pd.isna
+        p=p_text,
+        number=number_text,
+        names=split_names,
+        check=check_words,
+        missing=pd.isna,
+        breakable=_breakable,
     )
     made.globals.update(
         verdict_words=VERDICTS,

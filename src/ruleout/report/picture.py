@@ -99,7 +99,7 @@ def lay_out(mechanism: Mechanism, *, compact: bool = False) -> Picture:
     """
     points, pieces = points_and_pieces(mechanism, compact=compact)
     at = place(mechanism, points, pieces, TIGHT if compact else ROOMY, PAGE)
-    strokes = route(points, pieces, at)
+    strokes = route(points, pieces, at, reach=1.2 if compact else 1.8)
     t = np.linspace(0, 1, 33)
     seen = [bezier(s.curve, t) for s in strokes]
     seen += [at[p.name] + np.array(p.size) / 2 * s for p in points for s in (-1, 1)]

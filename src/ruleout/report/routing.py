@@ -137,7 +137,7 @@ def _own_price(xy: Array, flow: int, backward: bool, box: Array) -> Array:
     # Against the flow on one side of it, along it on the other.
     middle = across[:, _SAMPLES // 2] - (across[:, 0] + across[:, -1]) / 2
     wrong_side = middle < -1.0 if backward else middle > 1.0
-    price += 8.0 * wrong_side
+    price += 14.0 * wrong_side
     outside = np.maximum(box[0] - xy, 0) + np.maximum(xy - box[1], 0)
     return np.asarray(price + 0.4 * outside.max(axis=(1, 2)))
 
@@ -161,24 +161,24 @@ def _price_against_nodes(
     return price
 
 
-def _price_against_strokes(xy: Array, others: Sequence[Array]) -> Array:
-    """Return the price of coming close to the sampled strokes ``others``."""
+def _price_against_strokes(xy: Array, others: Sequence[Array], reach: float) -> Array:
+    """Return the price of coming close, within ``reach``, to the sampled strokes ``others``."""
     if not others:
         return np.zeros(len(xy))
     near = np.concatenate([other[::2] for other in others])
     d2 = ((xy[:, :, None, :] - near[None, None]) ** 2).sum(axis=-1)
-    close = np.exp(-d2 / 1.8**2).max(axis=2).sum(axis=1)
+    close = np.exp(-d2 / reach**2).max(axis=2).sum(axis=1)
     price = 4.0 * close
     for other in others:
         for mine in (xy[:, -1], xy[:, 0]):
             for its in (other[-1], other[0]):
                 d = np.hypot(*(mine - its).T)
-                price += 40.0 * np.maximum(0.0, 1 - d / 4.2)
+                price += 40.0 * np.maximum(0.0, 1 - d / (2.3 * reach))
     return np.asarray(price)
 
 
 def route(
-    points: Sequence[Point], pieces: Sequence[Piece], at: Mapping[str, Array]
+    points: Sequence[Point], pieces: Sequence[Piece], at: Mapping[str, Array], reach: float = 1.8
 ) -> list[Stroke]:
     """Return one stroke per piece, in the order of ``pieces``.
 
@@ -186,6 +186,8 @@ def route(
     ----------
     at : mapping of str to (2,) array
         Centres of the points.
+    reach : float
+        Distance within which strokes disturb each other.
     """
     by_name = {p.name: p for p in points}
     corners = np.array([at[p.name] + np.array(p.size) / 2 * s for p in points for s in (-1, 1)])
@@ -203,7 +205,7 @@ def route(
             for i in group:
                 curves, xy, price = options[i]
                 others = [bezier(c, _T) for j, c in chosen.items() if j != i]
-                total = price + _price_against_strokes(xy, others)
+                total = price + _price_against_strokes(xy, others, reach)
                 chosen[i] = curves[int(np.argmin(total))]
             if all(before[i] is not None and np.array_equal(before[i], chosen[i]) for i in group):
                 break

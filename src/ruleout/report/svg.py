@@ -52,15 +52,16 @@ def ticks(low: float, high: float, most: int = 4) -> list[float]:
     return [float(f"{k * step:.12g}") for k in range(first, last + 1)]
 
 
-def _ink(ink: Ink) -> str:
+def _ink(ink: Ink, size: str = "") -> str:
     if ink.kind == "text":
         x, y = ink.points[0]
-        return f'<text x="{short(x)}" y="{short(y)}" class="{ink.role}">{escape(ink.text)}</text>'
+        kind = f"g-name {size} {ink.role}"
+        return f'<text x="{short(x)}" y="{short(y)}" class="{kind}">{escape(ink.text)}</text>'
     if ink.kind == "curve":
         a, b, c, d = (f"{short(x)} {short(y)}" for x, y in ink.points)
-        return f'<path class="stroke {ink.role}" d="M{a}C{b} {c} {d}"/>'
+        return f'<path class="g-stroke {ink.role}" d="M{a}C{b} {c} {d}"/>'
     closing = "Z" if ink.closed else ""
-    kind = "box" if ink.fill == "node" else f"head {ink.fill}"
+    kind = "g-box" if ink.fill == "node" else f"g-head {ink.fill}"
     return f'<path class="{kind} {ink.role}" d="{polyline(ink.points)}{closing}"/>'
 
 
@@ -84,7 +85,7 @@ class GraphSymbols:
         parts: dict[str, list[str]] = {}
         for ink in inks(self._picture, choices):
             of = ink.of if ink.role != "settled" else ""
-            parts.setdefault(of, []).append(_ink(ink))
+            parts.setdefault(of, []).append(_ink(ink, "small"))
         uses = "".join(f'<use href="#{self._symbol("".join(p))}"/>' for p in parts.values())
         return self._svg(uses, label)
 
@@ -106,7 +107,9 @@ class GraphSymbols:
     def definitions(self) -> Markup:
         """Return the stored parts; to be put on the page once."""
         groups = "".join(f'<g id="{name}">{body}</g>' for body, name in self._symbols.items())
-        return Markup(f'<svg class="definitions" aria-hidden="true"><defs>{groups}</defs></svg>')
+        return Markup(
+            f'<svg class="definitions" aria-hidden="true"><defs>{groups}</defs></svg>'
+        )
 
 
 def _letters(picture: Picture) -> list[str]:
@@ -127,6 +130,6 @@ def _node_letter(picture: Picture, point: Point) -> str:
 
 def _letter(letter: str, x: float, y: float) -> str:
     return (
-        f'<circle class="spot" cx="{short(x)}" cy="{short(y)}" r="1.9"/>'
-        f'<text class="letter" x="{short(x)}" y="{short(y)}">{letter}</text>'
+        f'<circle class="g-spot" cx="{short(x)}" cy="{short(y)}" r="1.9"/>'
+        f'<text class="g-name letter" x="{short(x)}" y="{short(y)}">{letter}</text>'
     )

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 from ruleout.progress import Progress, Silent
 from ruleout.report.words import by_verdict
+from ruleout.store import write_aside
 from ruleout.verdicts.types import Judgement
 
 if TYPE_CHECKING:
@@ -25,23 +25,21 @@ _WITHOUT_DATE: Final = {
 }
 
 
-def write_aside(path: Path, content: str | bytes) -> None:
-    """Write a file under another name and rename it, so that nobody sees half of it."""
-    aside = path.with_name(f".{path.name}.part")
-    data = content.encode() if isinstance(content, str) else content
-    aside.write_bytes(data)
-    os.replace(aside, path)
-
-
 def save_figure(figure: Figure, folder: Path, name: str) -> None:
     """Write a figure as pdf, svg and png, the same bytes for the same figure."""
-    import io
-
-    folder.mkdir(parents=True, exist_ok=True)
     for kind in FORMATS:
-        buffer = io.BytesIO()
-        figure.savefig(buffer, format=kind, metadata=_WITHOUT_DATE[kind])
-        write_aside(folder / f"{name}.{kind}", buffer.getvalue())
+
+        def save(path: Path, kind: str = kind) -> None:
+            figure.savefig(path, format=kind, metadata=_WITHOUT_DATE[kind])
+
+        write_aside(folder / f"{name}.{kind}", save)
+
+
+def _write_text(path: Path, text: str) -> None:
+    def write(aside: Path) -> None:
+        aside.write_text(text, encoding="utf-8")
+
+    write_aside(path, write)
 
 
 def write_figures(
@@ -112,6 +110,5 @@ def write_report(
     """
     from ruleout.report.html import html_report
 
-    folder.mkdir(parents=True, exist_ok=True)
-    write_aside(folder / "report.html", html_report(judgement, case))
+    _write_text(folder / "report.html", html_report(judgement, case))
     write_figures(judgement, case, folder / "figures", style=style, progress=progress)
