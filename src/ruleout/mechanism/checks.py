@@ -6,7 +6,7 @@ from collections.abc import Mapping
 
 from ruleout.errors import did_you_mean
 from ruleout.files import Section
-from ruleout.mechanism.parameters import divides
+from ruleout.mechanism.parameters import edge_parts
 from ruleout.mechanism.types import Edge, Node
 
 
@@ -29,24 +29,24 @@ def check_edge(
 
 
 def _check_material(edge: Edge, nodes: Mapping[str, Node], table: Section) -> None:
-    for key, side in (("from", edge.sources), ("to", edge.targets)):
-        for name, _ in side:
-            if nodes[name].kind == "input":
-                table.fail(
-                    key,
-                    f"'{name}' is an input, whose level each condition sets; material "
-                    "moves between pools and expressed nodes (an input may speed it: "
-                    "use onto, or a rate expression)",
-                )
-            if nodes[name].kind == "switched":
-                table.fail(
-                    key,
-                    f"'{name}' is switched, a fraction; material moves between pools "
-                    "and expressed nodes",
-                )
-    both = {name for name, _ in edge.sources} & {name for name, _ in edge.targets}
-    if both and dict(edge.sources) == dict(edge.targets):
-        table.fail("to", f"'{min(both)}' turns into itself; nothing would move")
+    sources, targets = dict(edge.sources), dict(edge.targets)
+    if sources == targets:
+        table.fail("to", "'from' and 'to' are the same; nothing would move")
+    for key, name in [*(("from", n) for n in sources), *(("to", n) for n in targets)]:
+        kind = nodes[name].kind
+        consumed = sources.get(name, 0.0) != targets.get(name, 0.0)
+        if kind == "switched" and consumed:
+            table.fail(
+                key,
+                f"'{name}' is switched, a fraction of itself; material moves between pools and "
+                "expressed nodes (as a catalyst it may stand on both sides)",
+            )
+        if kind == "input" and key == "to" and consumed:
+            table.fail(
+                key,
+                f"'{name}' is an input, whose level each condition sets; material "
+                "moves to pools and expressed nodes",
+            )
 
 
 def _check_target(edge: Edge, target: Node, table: Section) -> None:
@@ -73,24 +73,13 @@ def _check_onto(edge: Edge, edges: Mapping[str, Edge], table: Section) -> None:
     if dot and part != "half":
         table.fail("onto", f'\'{edge.onto}\' was given; an edge acts onto "EDGE" or "EDGE.half"')
     target = edges[name]
-    if dot and not _has_half(target):
+    if dot and "half" not in set(edge_parts(target)):
         table.fail("onto", f"edge '{name}' has no half: its law is {target.laws[0]}")
-    seen = [edge.name]
-    while target.onto is not None:
-        seen.append(target.name)
-        following = edges.get(target.onto.partition(".")[0])
-        if target.name == edge.name or following is None:
-            break
-        if following.name in seen:
-            table.fail("onto", f"edges act onto each other in a circle: {', '.join(seen)}")
-        target = following
-    if target.name == edge.name:
-        table.fail("onto", f"edge '{edge.name}' acts onto itself")
-
-
-def _has_half(edge: Edge) -> bool:
-    if edge.rates:
-        return False
-    if edge.material:
-        return "saturating" in edge.laws
-    return edge.laws != ("linear",) or any(divides(edge, effect) for effect in edge.effects)
+    chain = [edge.name]
+    following: Edge | None = target
+    while following is not None:
+        if following.name in chain:
+            circle = " -> ".join([*chain, following.name])
+            table.fail("onto", f"edges act onto each other in a circle: {circle}")
+        chain.append(following.name)
+        following = edges.get(following.onto.partition(".")[0]) if following.onto else None

@@ -184,24 +184,17 @@ def _check_regulating(edge: Edge, table: Section) -> None:
     for key, side in (("from", edge.sources), ("to", edge.targets)):
         if isinstance(table.values.get(key), Mapping):
             table.fail(key, "stoichiometry belongs to converting and binding edges; name one node")
-        wanted = int(key == "from" or edge.onto is None)
-        if len(side) != wanted and not (key == "to" and edge.onto):
-            table.fail(key, f"a regulating edge has one node here, {len(side) or 'none'} was given")
+        if len(side) != 1 and not (key == "to" and edge.onto):
+            table.fail(key, f"a regulating edge has one node here; {len(side) or 'none'} was given")
     if edge.onto is not None:
-        _refuse(table, ("to", "on", "necessary", "acts_on"), "an edge onto another edge has none")
-        return
-    adding = not all(divides(edge, effect) for effect in edge.effects)
-    if edge.necessary:
-        if "linear" in edge.laws:
-            table.fail("necessary", 'a necessary edge needs law = "saturating" or "hill"')
-        if not adding:
-            table.fail(
-                "necessary",
-                f"an edge that {edge.effects[0]} through the {edge.on} divides "
-                "all of it anyway; leave 'necessary' out",
-            )
-    if edge.acts_on and (edge.necessary or not adding):
-        table.fail("acts_on", "only an edge that adds a term of its own can have its own 'acts_on'")
+        _refuse(table, ("to", "on", "acts_on"), "an edge onto another edge has none")
+    if edge.necessary and "linear" in edge.laws:
+        table.fail("necessary", 'a necessary edge needs law = "saturating" or "hill"')
+    if all(divides(edge, effect) for effect in edge.effects):
+        reason = "this edge divides the whole rate instead of adding a term to it"
+        _refuse(table, ("necessary", "acts_on"), reason)
+    elif edge.necessary:
+        _refuse(table, ("acts_on",), "a necessary edge is a factor of the whole rate")
 
 
 def _check_material(edge: Edge, table: Section) -> None:
@@ -213,27 +206,10 @@ def _check_material(edge: Edge, table: Section) -> None:
         _refuse(table, ("law", "reversible"), "the rate is given as an expression")
         _check_own_names(edge, table)
         return
-    if "hill" in edge.laws:
-        table.fail(
-            "law",
-            "'hill' is for regulating edges; here use linear (mass action), saturating "
-            "(Michaelis-Menten) or a rate expression",
-        )
     if effect == "binds":
         _check_binding(edge, table)
-    elif "saturating" in edge.laws:
-        if len(edge.sources) != 1:
-            table.fail(
-                "law",
-                f"'saturating' needs one source, {len(edge.sources)} are given; "
-                "write a rate expression",
-            )
-        if edge.reversible:
-            table.fail(
-                "reversible",
-                "only mass action (linear) runs backwards here; write the "
-                "reverse reaction as an edge of its own",
-            )
+    elif edge.laws != ("linear",) and not edge.sources:
+        table.fail("law", "an inflow has no source to saturate; leave 'law' out")
     if edge.reversible and not (edge.sources and edge.targets):
         table.fail("reversible", "a reversible edge needs both 'from' and 'to'")
 

@@ -62,7 +62,7 @@ def parameter_names(mechanism: Mechanism) -> dict[str, Role]:
         roles |= {f"{node.name}.{part}": Role(node.name, part) for part in _node_parts(node)}
     for edge in mechanism.edges.values():
         source = edge.sources[0][0] if edge.sources else ""
-        for part in _edge_parts(edge):
+        for part in edge_parts(edge):
             roles[f"{edge.name}.{part}"] = Role(edge.name, part, source)
         for name in own_names(edge, mechanism):
             roles[f"{edge.name}.{name}"] = Role(edge.name, "own")
@@ -95,7 +95,8 @@ def divides(edge: Edge, effect: str) -> bool:
     return (effect == "inhibits") == (edge.on == "gain")
 
 
-def _edge_parts(edge: Edge) -> Iterator[Part]:
+def edge_parts(edge: Edge) -> Iterator[Part]:
+    """Yield the parameters of an edge over all its options, without own names."""
     if edge.material:
         if not edge.rates:
             yield "rate"
@@ -103,8 +104,10 @@ def _edge_parts(edge: Edge) -> Iterator[Part]:
                 yield "rate_back"
             if "binds" in edge.effects:
                 yield "release"
-            if "saturating" in edge.laws:
+            if edge.laws != ("linear",):
                 yield "half"
+            if "hill" in edge.laws:
+                yield "hill"
     else:
         dividing = [divides(edge, effect) for effect in edge.effects]
         if not all(dividing) and not edge.necessary:

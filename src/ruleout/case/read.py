@@ -1,4 +1,4 @@
-"""The three files of a case, read and held against each other."""
+"""``mechanism.toml``, ``experiments.toml`` and ``data.csv`` -> :class:`Case`."""
 
 from __future__ import annotations
 
@@ -7,13 +7,16 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
+from ruleout.case.conditions import check_condition
+from ruleout.case.context import DATA, EXPERIMENTS, MECHANISM, Context
+from ruleout.case.priors import check_priors
+from ruleout.case.readouts import check_readouts
+from ruleout.case.units import check_time_unit
 from ruleout.errors import InputError
 from ruleout.experiments import read_experiments
 from ruleout.experiments.types import Experiments
-from ruleout.mechanism import read_mechanism
+from ruleout.mechanism import parameter_names, read_mechanism
 from ruleout.mechanism.types import Mechanism
-
-MECHANISM, EXPERIMENTS, DATA = "mechanism.toml", "experiments.toml", "data.csv"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -58,6 +61,7 @@ def read_case(folder: Path | str, require_data: bool = True) -> Case:
     data = folder / DATA if (folder / DATA).exists() else None
     mechanism = read_mechanism(folder / MECHANISM)
     experiments = read_experiments(folder / EXPERIMENTS, data)
+    _check_together(Context(folder, mechanism, experiments, parameter_names(mechanism)))
     files = [folder / MECHANISM, folder / EXPERIMENTS, *([data] if data else [])]
     hashes = {file.name: hashlib.sha256(file.read_bytes()).hexdigest() for file in files}
     return Case(folder.resolve().name, folder, mechanism, experiments, hashes)
@@ -68,12 +72,17 @@ def _check_folder(folder: Path, require_data: bool) -> None:
         raise InputError("there is no such folder; give the folder of a case", where=str(folder))
     if not folder.is_dir():
         raise InputError("this is a file; give the folder it is in", where=str(folder))
-    needed = {
-        MECHANISM: "'ruleout new DIR' makes a case to start from",
-        EXPERIMENTS: "'ruleout new DIR' makes a case to start from",
-    }
+    needed = dict.fromkeys((MECHANISM, EXPERIMENTS), "'ruleout new DIR' makes a case to start from")
     if require_data:
         needed[DATA] = "without data, 'ruleout rehearse' tells what the experiments could rule out"
     for name, advice in needed.items():
         if not (folder / name).exists():
             raise InputError(f"there is no {name} in this folder; {advice}", where=str(folder))
+
+
+def _check_together(context: Context) -> None:
+    check_readouts(context)
+    for condition in context.experiments.conditions.values():
+        check_condition(context, condition)
+    check_priors(context)
+    check_time_unit(context)
