@@ -55,7 +55,12 @@ def where(mechanism: Mechanism, field: str) -> str:
 
 
 def _items(mechanism: Mechanism) -> list[_Item]:
-    """Return nodes, then edges with those that others act onto first."""
+    """Return nodes, then edges with those that others act onto first, those in rules early.
+
+    (The sooner a rule is broken, the less is walked through in vain.)
+    """
+    ruled = {member.partition("=")[0] for rule in mechanism.rules for member in rule.members}
+    rank = {name: (name not in ruled, i) for i, name in enumerate(mechanism.edges)}
     order = nx.DiGraph()
     order.add_nodes_from(mechanism.edges)
     for edge in mechanism.edges.values():
@@ -63,7 +68,7 @@ def _items(mechanism: Mechanism) -> list[_Item]:
         if target is not None:
             order.add_edge(target, edge.name)
     try:
-        names = list(nx.topological_sort(order))
+        names = list(nx.lexicographical_topological_sort(order, key=rank.__getitem__))
     except nx.NetworkXUnfeasible:
         circle = [a for a, _ in nx.find_cycle(order)]
         raise InputError(

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Collection, Mapping, Sequence
 
+import networkx as nx
+
 from ruleout.errors import InputError
 from ruleout.expressions import ZERO, substitute, symbols
 from ruleout.mechanism.parameters import divides
@@ -61,10 +63,10 @@ class Nesting:
         self.priors: Mapping[str, Prior] = mechanism.priors
         self.read = frozenset(read)
         self.nodes = frozenset(mechanism.nodes)
-        self.followers: dict[str, set[str]] = {}
-        for name, prior in mechanism.priors.items():
-            if isinstance(prior, Tied):
-                self.followers.setdefault(prior.to, set()).add(name.split(".", 1)[0])
+        ties = nx.Graph(
+            (name, prior.to) for name, prior in self.priors.items() if isinstance(prior, Tied)
+        )
+        self.tied = {name: group for group in nx.connected_components(ties) for name in group}
         self.reduces = {
             contest.name: self._reductions(mechanism, contest)
             for contest in contests
@@ -72,8 +74,11 @@ class Nesting:
         }
 
     def _movable(self, parameters: Collection[str] | None) -> bool:
+        """Return whether none of the parameters is fixed, by itself or through a tie."""
         return parameters is not None and not any(
-            isinstance(self.priors.get(name), Fixed | Tied) for name in parameters
+            isinstance(self.priors.get(other), Fixed)
+            for name in parameters
+            for other in self.tied.get(name, (name,))
         )
 
     def _law_limit(self, edge: Edge, larger: Option, smaller: Option) -> bool:
@@ -88,7 +93,7 @@ class Nesting:
             return False
         if high == 2:
             prior = self.priors.get(f"{edge.name}.hill")
-            if isinstance(prior, Tied) or (isinstance(prior, Fixed) and prior.value != 1.0):
+            if isinstance(prior, Fixed) and prior.value != 1.0:
                 return False
         if low == 0:
             scale = strengths(one, self.nodes)
@@ -127,13 +132,14 @@ class Nesting:
     def _fades(self, edge: Edge) -> bool:
         return self._movable(strengths(edge, self.nodes))
 
-    def _tied_elsewhere(self, edge: Edge, survivors: Wiring) -> bool:
-        """Return whether a parameter that would have to vanish rules another one that stays."""
-        owners = {
-            owner
-            for name in strengths(edge, self.nodes) or ()
-            for owner in self.followers.get(name, ())
-        } - {edge.name}
+    def _tied_elsewhere(self, edge: Edge, survivors: Wiring, *shape: str) -> bool:
+        """Return whether a parameter that would have to go is tied to one that stays.
+
+        ``shape`` names parameters of the edge beside those that take its effect away.
+        """
+        names = [*(strengths(edge, self.nodes) or ()), *(f"{edge.name}.{part}" for part in shape)]
+        owners = {other.partition(".")[0] for name in names for other in self.tied.get(name, ())}
+        owners.discard(edge.name)
         return any(owner in survivors.nodes or owner in survivors.edges for owner in owners)
 
     def _irrelevant(self, edge: Edge, smaller: Wiring) -> bool:
@@ -164,8 +170,10 @@ class Nesting:
             return False
         for name, pairs in self.reduces.items():
             a, b = larger.choices[name], smaller.choices[name]
-            changed = a != b and b.present
-            if changed and ((a, b) not in pairs or self._tied_elsewhere(big.edges[name], small)):
+            if a == b or not b.present:
+                continue
+            edge = big.edges[name]
+            if (a, b) not in pairs or self._tied_elsewhere(edge, small, "half", "hill"):
                 return False
         return all(self._drops(larger, smaller, n) for n in big.edges.keys() - small.edges.keys())
 
