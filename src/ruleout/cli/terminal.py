@@ -14,6 +14,7 @@ from ruleout.report.words import (
     KEPT_MEANS,
     VERDICTS,
     by_verdict,
+    headline,
     p_text,
     split_names,
 )
@@ -128,8 +129,7 @@ def print_judgement(console: Console, judgement: Judgement) -> None:
     """Print claims, variants and what the verdicts mean."""
     console.print()
     console.print(Text(str(judgement.meta["title"]), style="bold"))
-    for sentence in judgement.meta["summary"]:
-        print_wrapped(console, sentence)
+    print_wrapped(console, headline(judgement.variants))
     if len(judgement.claims):
         print_heading(console, "Claims")
         print_claims(console, judgement.claims)
@@ -141,11 +141,4 @@ def print_judgement(console: Console, judgement: Judgement) -> None:
         print_findings(console, general)
     print_heading(console, "How to read this")
     print_wrapped(console, KEPT_MEANS)
-    conditions = "; ".join(judgement.meta["conditions_of_guarantee"])
-    if conditions:
-        alpha = judgement.meta["alpha"]
-        print_wrapped(
-            console,
-            f"The chance that a true variant is ruled out is kept near or below {alpha:g} for the "
-            f"whole table, if {conditions}.",
-        )
+    print_sentences(console, judgement.meta["conditions_of_guarantee"])

@@ -25,6 +25,7 @@ from ruleout.report.words import (
     VERDICTS,
     by_verdict,
     check_words,
+    headline,
     looks_like_dosing,
     number_text,
     p_text,
@@ -126,6 +127,7 @@ def html_report(judgement: Judgement, case: Case) -> str:
     return render(
         "judgement.html",
         meta=judgement.meta,
+        headline=headline(judgement.variants),
         claims=judgement.claims.to_dict("records"),
         rows=rows,
         graph=GraphSymbols(picture, "m").draw_with_letters(

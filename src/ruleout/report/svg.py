@@ -107,9 +107,7 @@ class GraphSymbols:
     def definitions(self) -> Markup:
         """Return the stored parts; to be put on the page once."""
         groups = "".join(f'<g id="{name}">{body}</g>' for body, name in self._symbols.items())
-        return Markup(
-            f'<svg class="definitions" aria-hidden="true"><defs>{groups}</defs></svg>'
-        )
+        return Markup(f'<svg class="definitions" aria-hidden="true"><defs>{groups}</defs></svg>')
 
 
 def _letters(picture: Picture) -> list[str]:

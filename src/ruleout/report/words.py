@@ -59,6 +59,18 @@ def split_names(cell: object) -> list[str]:
     return [part for part in str(cell).split(";") if part] if isinstance(cell, str) else []
 
 
+def headline(variants: pd.DataFrame) -> str:
+    """Return how many variants are kept, ruled out and not judged, as a sentence."""
+    counts = variants["verdict"].value_counts()
+    parts = [
+        f"{counts.get(verdict, 0)} {'is' if counts.get(verdict, 0) == 1 else 'are'} {words}"
+        for verdict, words in reversed(VERDICTS.items())
+        if counts.get(verdict, 0) or verdict != "not_judged"
+    ]
+    total = f"{len(variants)} variants" if len(variants) != 1 else "one variant"
+    return f"Of {total}, {', '.join(parts[:-1])} and {parts[-1]}."
+
+
 def by_verdict(variants: pd.DataFrame) -> pd.DataFrame:
     """Return the variants table with the kept first, then not judged, then ruled out."""
     order = {verdict: rank for rank, verdict in enumerate(VERDICTS)}

@@ -109,6 +109,10 @@ def write_report(
         If ``style`` cannot be used.
     """
     from ruleout.report.html import html_report
+    from ruleout.report.latex import latex_table
+    from ruleout.report.methods import methods_text
 
     _write_text(folder / "report.html", html_report(judgement, case))
+    _write_text(folder / "table.tex", latex_table(judgement))
+    _write_text(folder / "methods.txt", methods_text(judgement, case))
     write_figures(judgement, case, folder / "figures", style=style, progress=progress)
