@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import threading
 from collections import OrderedDict
 from collections.abc import Sequence
@@ -10,8 +11,9 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import ArrayLike
 
+from ruleout.kernel.compiled import CompiledBackend
 from ruleout.kernel.conservation import conserved_totals
-from ruleout.kernel.lowering import lower
+from ruleout.kernel.lowering import Lowered, lower
 from ruleout.kernel.reference import ReferenceBackend
 from ruleout.kernel.schedule import Schedule, pack
 from ruleout.kernel.stability import are_stable
@@ -37,6 +39,14 @@ def _compiled(system: System) -> Program:
     return Program(system)
 
 
+def _backend(
+    lowered: Lowered, totals: Array, pivots: tuple[int, ...]
+) -> CompiledBackend | ReferenceBackend:
+    if os.environ.get("RULEOUT_KERNEL") == "reference":
+        return ReferenceBackend(lowered, totals, pivots)
+    return CompiledBackend(lowered, totals, pivots)
+
+
 class Program:
     """One system, ready to be solved in batches. Made by :func:`compile_system`.
 
@@ -49,7 +59,7 @@ class Program:
         self.system = system
         self._lowered = lower(system)
         self._totals, self._pivots = conserved_totals(self._lowered)
-        self._backend = ReferenceBackend(self._lowered, self._totals, self._pivots)
+        self._backend = _backend(self._lowered, self._totals, self._pivots)
         self._schedules: OrderedDict[tuple[int, ...], tuple[Sequence[Protocol], Schedule]] = (
             OrderedDict()
         )

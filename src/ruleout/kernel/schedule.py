@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +12,20 @@ from numpy.typing import NDArray
 from ruleout.kernel.types import Array, Protocol
 
 Integers = NDArray[np.int64]
+
+
+class Plan(NamedTuple):
+    """The arrays of a schedule that the compiled driver reads."""
+
+    segment_at: Integers
+    time_at: Integers
+    breaks: Array
+    factor: Array
+    shift: Array
+    keep: Array
+    add: Array
+    times: Array
+    endless: NDArray[np.bool_]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -45,6 +59,11 @@ class Schedule:
     times: Array
     endless: NDArray[np.bool_]
     outputs: int
+
+    @property
+    def plan(self) -> Plan:
+        """The arrays alone."""
+        return Plan(*(getattr(self, name) for name in Plan._fields))
 
 
 def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced: bool) -> Schedule:

@@ -1,0 +1,195 @@
+"""Compiled implementation: emitted code in SIMD lanes, driven from a queue."""
+
+from __future__ import annotations
+
+import os
+import threading
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ruleout.kernel.engine import SystemCode
+from ruleout.kernel.lowering import Lowered
+from ruleout.kernel.memory import Lanes, Rows, new_lanes
+from ruleout.kernel.reference import Tape
+from ruleout.kernel.schedule import Integers, Schedule
+from ruleout.kernel.steps import Setting
+from ruleout.kernel.types import Array, Status
+
+Flags = NDArray[np.int8]
+_STIFF_STEPS = 6.0
+_ROWS_PER_TASK = 512
+
+
+class CompiledBackend:
+    """Solves and steady states of one lowered system, by machine code."""
+
+    def __init__(
+        self,
+        lowered: Lowered,
+        totals: Array,
+        pivots: tuple[int, ...],
+        *,
+        width: int | None = None,
+    ) -> None:
+        self._n, self._p = len(lowered.states), len(lowered.parameters)
+        self._outputs = self._n - lowered.forced
+        self._lowered = lowered
+        self._code = SystemCode(lowered, totals, pivots, width)
+        self._spare: dict[int, list[Lanes]] = {}
+
+    @cached_property
+    def _jacobian(self) -> Tape:
+        entries = [entry for row in self._lowered.jacobian for entry in row]
+        return Tape(entries, (*self._lowered.states, *self._lowered.parameters))
+
+    def jacobian(self, y: Array, q: Array) -> Array:
+        """Return the (R, N, N) Jacobians at states y (R, N) and parameters q (R, P)."""
+        return self._jacobian.run([*y.T, *q.T]).reshape(len(y), self._n, self._n)
+
+    def solve(
+        self,
+        y0: Array,
+        p: Array,
+        schedule: Schedule,
+        which: Integers,
+        *,
+        rtol: float,
+        atol: Array,
+        group: int,
+        max_steps: int,
+    ) -> tuple[Array, Flags, NDArray[np.int32]]:
+        """Return states (B, M, N), status and steps; see :meth:`Program.solve`."""
+        from ruleout.kernel.driver import RUNNING, integrate
+
+        size = len(y0)
+        leads = which[::group]
+        begin = schedule.segment_at[leads]
+        plan = schedule.plan
+        rows = Rows(
+            y=y0.copy(),
+            p=p,
+            which=which,
+            states=np.full((size, schedule.outputs, self._outputs), np.nan),
+            status=np.full(size, RUNNING, dtype=np.int8),
+            t=schedule.breaks[begin],
+            h=np.zeros(len(leads)),
+            mark=np.zeros(len(leads)),
+            started=np.zeros(len(leads)),
+            segment=begin - 1,
+            output=schedule.time_at[leads],
+            steps=np.zeros(size, dtype=np.int32),
+        )
+        vectors = _vectors(group, self._code.width)
+
+        def run(groups: Integers) -> None:
+            lanes = self._borrow(vectors)
+            lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
+            lanes.tolerance[len(Setting) :] = atol
+            stiff = np.empty(len(groups), dtype=np.int64)
+            left = integrate(False, groups, group, lanes, plan, rows, max_steps, stiff)
+            if left:
+                lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
+                integrate(True, stiff[:left], group, lanes, plan, rows, max_steps, stiff[:0])
+            self._give_back(lanes)
+
+        _in_parallel(run, np.arange(len(leads)), _ROWS_PER_TASK // group + 1)
+        if schedule.endless.any():
+            self._end(rows, schedule)
+        return rows.states, rows.status, rows.steps
+
+    def steady(self, y0: Array, q: Array) -> tuple[Array, Flags]:
+        """Return the states (R, N) that the flow from y0 settles at, and their status."""
+        from ruleout.kernel.settling import STEADY_RTOL, settle
+
+        result = np.full(y0.shape, np.nan)
+        status = np.full(len(y0), Status.NO_STEADY_STATE, dtype=np.int8)
+
+        def run(part: Integers) -> None:
+            lanes, trial = self._borrow(1), self._borrow(1)
+            for memory in (lanes, trial):
+                memory.tolerance[:] = 0.0
+                memory.tolerance[: len(Setting)] = STEADY_RTOL, np.inf, 1.0, STEADY_RTOL * 1e-6
+            settle(part[0], part[-1] + 1, lanes, trial, y0, q, result, status)
+            self._give_back(lanes)
+            self._give_back(trial)
+
+        if len(y0):
+            _in_parallel(run, np.arange(len(y0)), _ROWS_PER_TASK)
+        return result, status
+
+    def _end(self, rows: Rows, schedule: Schedule) -> None:
+        """Carry rows whose protocol ends in a steady state there."""
+        at = np.flatnonzero(schedule.endless[rows.which] & (rows.status == Status.OK))
+        k = rows.which[at]
+        last = schedule.segment_at[k + 1] - 1
+        q = schedule.factor[last] * rows.p[at] + schedule.shift[last]
+        y, status = self.steady(rows.y[at], q)
+        rows.states[at, schedule.time_at[k + 1] - schedule.time_at[k]] = y[:, : self._outputs]
+        rows.status[at] = status
+
+    def _borrow(self, vectors: int) -> Lanes:
+        # List operations are atomic, so threads can share the spare ones without a lock.
+        spare = self._spare.setdefault(vectors, [])
+        try:
+            return spare.pop()
+        except IndexError:
+            code = self._code
+            return new_lanes(
+                vectors,
+                code.width,
+                self._n,
+                self._p,
+                code.prepared,
+                code.scratch,
+                code.functions,
+                code.steps,
+            )
+
+    def _give_back(self, lanes: Lanes) -> None:
+        self._spare[len(lanes.control)].append(lanes)
+
+
+def _vectors(group: int, width: int) -> int:
+    """Return the number of vectors that groups of this size fill best."""
+    fewest = -(-group // width)
+
+    def waste(vectors: int) -> float:
+        lanes = vectors * width
+        return (lanes % group) / lanes
+
+    return min(range(fewest, fewest + 4), key=waste)
+
+
+_threads = os.cpu_count() or 1
+_pool: ThreadPoolExecutor | None = None
+_pool_lock = threading.Lock()
+
+
+def set_threads(count: int) -> None:
+    """Use ``count`` threads for big batches from now on; answers do not depend on it."""
+    global _threads, _pool
+    with _pool_lock:
+        if count != _threads and _pool is not None:
+            _pool.shutdown(wait=False)
+            _pool = None
+        _threads = count
+
+
+def _in_parallel(run: Callable[[Integers], None], items: Integers, size: int) -> None:
+    """Call ``run`` on parts of ``items`` of about ``size``, in threads if there are several."""
+    global _pool
+    parts = len(items) // size
+    if _threads == 1 or parts < 2:
+        run(items)
+        return
+    with _pool_lock:
+        if _pool is None:
+            _pool = ThreadPoolExecutor(_threads, thread_name_prefix="kernel")
+        pool = _pool
+    pieces: Sequence[Integers] = np.array_split(items, parts)
+    for _ in pool.map(run, pieces):
+        pass

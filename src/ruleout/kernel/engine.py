@@ -1,0 +1,113 @@
+"""From assembly to machine code of this host."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import lru_cache
+from typing import Any
+
+import numpy as np
+
+from ruleout.kernel.assembly import Assembly
+from ruleout.kernel.emission import Emission
+from ruleout.kernel.lowering import Lowered
+from ruleout.kernel.schedule import Integers
+from ruleout.kernel.steps import STEP_FUNCTIONS, SYSTEM_FUNCTIONS, Steps, scratch_vectors
+from ruleout.kernel.types import Array
+
+
+class MachineCode:
+    """A compiled module. Its addresses are good as long as this object lives.
+
+    Parameters
+    ----------
+    text : str
+    names : sequence of str
+        Functions whose addresses are wanted.
+    effort : int
+        How hard LLVM works before it generates code, 0 to 3.
+    """
+
+    def __init__(self, text: str, names: Sequence[str], effort: int) -> None:
+        import llvmlite.binding as llvm
+
+        machine = _machine()
+        module = llvm.parse_assembly(text, context=llvm.create_context())
+        module.triple = machine.triple
+        module.data_layout = str(machine.target_data)
+        options = llvm.create_pipeline_tuning_options(speed_level=effort)
+        options.loop_vectorization = False
+        options.slp_vectorization = False
+        builder = llvm.create_pass_builder(machine, options)
+        if effort:
+            builder.getModulePassManager().run(module, builder)
+        self._engine = llvm.create_mcjit_compiler(module, machine)
+        self._engine.finalize_object()
+        self.addresses: Integers = np.array(
+            [self._engine.get_function_address(name) for name in names], dtype=np.int64
+        )
+
+
+class SystemCode:
+    """Machine code of one system.
+
+    Attributes
+    ----------
+    width : int
+        Number of lanes W.
+    steps, functions : int64 arrays
+        Addresses of :data:`STEP_FUNCTIONS` and :data:`SYSTEM_FUNCTIONS`.
+    prepared, scratch : int
+        Vectors of memory that ``c`` and ``scratch`` need.
+    """
+
+    def __init__(
+        self, lowered: Lowered, totals: Array, pivots: tuple[int, ...], width: int | None = None
+    ) -> None:
+        self.width = width or host_width()
+        assembly = Assembly(self.width)
+        emission = Emission(assembly, lowered, totals, pivots)
+        emission.write()
+        names = list(SYSTEM_FUNCTIONS)
+        if not pivots:
+            names = [name.replace("newton_factor", "factor") for name in names]
+        self._system = MachineCode(assembly.text(), names, effort=0)
+        self._steps = _step_code(self.width)
+        self.functions = self._system.addresses
+        self.steps = self._steps.addresses
+        self.prepared = emission.prepared
+        self.scratch = scratch_vectors(len(lowered.states), emission.factors)
+
+
+@lru_cache(maxsize=4)
+def _step_code(width: int) -> MachineCode:
+    assembly = Assembly(width)
+    Steps(assembly).write()
+    return MachineCode(assembly.text(), STEP_FUNCTIONS, effort=2)
+
+
+def host_width() -> int:
+    """Return how many doubles this host handles at once."""
+    import llvmlite.binding as llvm
+
+    features = llvm.get_host_cpu_features()
+    if features.get("avx512f") and features.get("avx512dq"):
+        return 8
+    if features.get("avx2"):
+        return 4
+    return 2
+
+
+def _machine() -> Any:
+    """Return a new target machine; the engine it is given to takes it over."""
+    import llvmlite.binding as llvm
+
+    llvm.initialize_native_target()
+    llvm.initialize_native_asmprinter()
+    target = llvm.Target.from_default_triple()
+    features = llvm.get_host_cpu_features()
+    # LLVM would halve 512-bit vectors on some hosts, to spare others on the same chip.
+    features["prefer-256-bit"] = False
+    return target.create_target_machine(
+        cpu=llvm.get_host_cpu_name(), features=features.flatten(), opt=2, codemodel="jitdefault"
+    )
