@@ -123,10 +123,8 @@ def test_laws_contain_their_limits(case_of):
         ('"e.strength" = 0.5', {("saturating", "linear"), ("hill", "linear")}),
         ('"e.hill" = 2', {("hill", "saturating"), ("hill", "linear")}),
         ('"e.hill" = 1', set()),
-        (
-            '"e.half" = "x.basal"',
-            {("saturating", "linear"), ("hill", "saturating"), ("hill", "linear")},
-        ),
+        ('"e.half" = "x.basal"', {("saturating", "linear"), ("hill", "linear")}),
+        ('"e.hill" = "x.basal"', {("hill", "saturating"), ("hill", "linear")}),
     ],
 )
 def test_fixed_parameters_prevent_law_limits(case_of, prior, lost):

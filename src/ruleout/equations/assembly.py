@@ -16,11 +16,11 @@ from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
 
 from ruleout.equations.laws import Laws
-from ruleout.expressions import ONE, ZERO, Expr, const, substitute, sym
+from ruleout.expressions import ONE, ZERO, Expr, const, substitute, sym, symbols
 from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge, Node
 from ruleout.variants import Wiring
-from ruleout.variants.contests import has_half, has_hill
+from ruleout.variants.contests import cut_with_onto, has_half, has_hill
 from ruleout.variants.graph import net_amounts
 from ruleout.variants.rates import rate_expression
 
@@ -99,7 +99,8 @@ class Assembly:
         self.without_basal = without_basal
         self.bend = bend or Bend()
         self.laws = laws or Laws()
-        self.edges = {n: e for n, e in wiring.edges.items() if n not in self.bend.cut}
+        cut = cut_with_onto(wiring.edges, self.bend.cut)
+        self.edges = {n: e for n, e in wiring.edges.items() if n not in cut}
         self.onto: dict[str, list[Edge]] = {}
         for edge in self.edges.values():
             if edge.onto is not None:
@@ -278,7 +279,10 @@ class Assembly:
         return chain
 
     def equations(self) -> dict[str, Expr]:
-        """Return the rate of change of every state: nodes in file order, then delay stages."""
+        """Return the rate of change of every state: nodes in file order, then delay stages.
+
+        A delay that leads nowhere (its target is gone) has no stages.
+        """
         rhs: dict[str, Expr] = {}
         for name, node in self.wiring.nodes.items():
             if node.kind == "input" or name in self.bend.levels:
@@ -290,6 +294,8 @@ class Assembly:
             if name in self.bend.switched_nodes:
                 change = sym(f"on:{name}") * change
             rhs[name] = change
+        read = symbols(*rhs.values())
         for edge in self.edges.values():
-            rhs.update(self.stages(edge))
+            if f"{edge.name}:{edge.stages}" in read:
+                rhs.update(self.stages(edge))
         return rhs

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Collection, Mapping
 from dataclasses import replace
 
 from ruleout.mechanism.parameters import divides
@@ -27,6 +28,14 @@ def has_hill(edge: Edge) -> bool:
 def onto_edge(edge: Edge) -> str | None:
     """Return the name of the edge that an ``onto`` edge acts on."""
     return None if edge.onto is None else edge.onto.partition(".")[0]
+
+
+def cut_with_onto(edges: Mapping[str, Edge], cut: Collection[str]) -> frozenset[str]:
+    """Return ``cut`` with every edge that acts, directly or by way of others, onto a cut one."""
+    gone = set(cut)
+    while following := {n for n, e in edges.items() if onto_edge(e) in gone} - gone:
+        gone |= following
+    return frozenset(gone)
 
 
 def onto_half(edge: Edge) -> bool:

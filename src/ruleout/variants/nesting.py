@@ -10,7 +10,7 @@ from ruleout.errors import InputError
 from ruleout.expressions import ZERO, substitute, symbols
 from ruleout.mechanism.parameters import divides
 from ruleout.mechanism.types import Edge, Fixed, Mechanism, Prior, Tied
-from ruleout.variants.contests import matches, onto_edge, settle
+from ruleout.variants.contests import has_half, has_hill, matches, onto_edge, settle
 from ruleout.variants.expansion import Draft, where
 from ruleout.variants.rates import rate_expression
 from ruleout.variants.types import Contest, Option, Wiring
@@ -132,14 +132,10 @@ class Nesting:
     def _fades(self, edge: Edge) -> bool:
         return self._movable(strengths(edge, self.nodes))
 
-    def _tied_elsewhere(self, edge: Edge, survivors: Wiring, *shape: str) -> bool:
-        """Return whether a parameter that would have to go is tied to one that stays.
-
-        ``shape`` names parameters of the edge beside those that take its effect away.
-        """
-        names = [*(strengths(edge, self.nodes) or ()), *(f"{edge.name}.{part}" for part in shape)]
-        owners = {other.partition(".")[0] for name in names for other in self.tied.get(name, ())}
-        owners.discard(edge.name)
+    def _tied_elsewhere(self, edge: Edge, parameters: Collection[str], survivors: Wiring) -> bool:
+        """Return whether a parameter that would have to go is tied to one that stays."""
+        tied = {other for name in parameters for other in self.tied.get(name, ())}
+        owners = {name.partition(".")[0] for name in tied} - {edge.name}
         return any(owner in survivors.nodes or owner in survivors.edges for owner in owners)
 
     def _irrelevant(self, edge: Edge, smaller: Wiring) -> bool:
@@ -159,7 +155,8 @@ class Nesting:
         pairs = self.reduces.get(name)
         declared = pairs is not None and (larger.choices[name], Option(False)) in pairs
         fades = declared or self._fades(edge)
-        return fades and not self._tied_elsewhere(edge, smaller.wiring)
+        going = strengths(edge, self.nodes) or ()
+        return fades and not self._tied_elsewhere(edge, going, smaller.wiring)
 
     def contains(self, larger: Draft, smaller: Draft) -> bool:
         """Return whether ``larger`` can be reduced to ``smaller`` (they differ)."""
@@ -172,8 +169,13 @@ class Nesting:
             a, b = larger.choices[name], smaller.choices[name]
             if a == b or not b.present:
                 continue
-            edge = big.edges[name]
-            if (a, b) not in pairs or self._tied_elsewhere(edge, small, "half", "hill"):
+            if (a, b) not in pairs:
+                return False
+            one, other = big.edges[name], small.edges[name]
+            going = {f"{name}.hill"} if has_hill(one) else set()
+            if has_half(one) and not has_half(other):
+                going |= {f"{name}.half", *(strengths(one, self.nodes) or ())}
+            if self._tied_elsewhere(one, going, small):
                 return False
         return all(self._drops(larger, smaller, n) for n in big.edges.keys() - small.edges.keys())
 

@@ -7,6 +7,7 @@ from collections.abc import Collection, Sequence
 from ruleout.experiments.types import ALWAYS, Condition, Experiments
 from ruleout.expressions import symbols
 from ruleout.mechanism.types import REST, Node
+from ruleout.variants.contests import cut_with_onto
 from ruleout.variants.graph import Arc, pushes
 from ruleout.variants.types import Wiring
 
@@ -76,9 +77,13 @@ def _effective_in(
     """Return the nodes and edges of a wiring that can move the goals in one condition."""
     gone = {n for n, t in condition.remove.items() if t == ALWAYS}
     gone |= {n for n, node in wiring.nodes.items() if _silent(node, condition)}
-    cut = {e for e, t in condition.cut.items() if t == ALWAYS}
+    cut = cut_with_onto(wiring.edges, {e for e, t in condition.cut.items() if t == ALWAYS})
     # A clamp holds from time 0 only; before that the node takes part in what happens at rest.
-    rests = any(condition.start.get(n, node.start) == REST for n, node in wiring.nodes.items())
+    rests = any(
+        condition.start.get(name, node.start) == REST
+        for name, node in wiring.nodes.items()
+        if node.kind != "input"
+    )
     blocked = gone if rests else gone | set(condition.clamp)
     alive = [arc for arc in arcs if arc.edge not in cut and arc.source not in gone]
     reach = upstream(alive, goals, blocked)
