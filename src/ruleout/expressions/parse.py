@@ -90,7 +90,7 @@ def _tokens(text: str, where: str | None) -> list[_Token]:
 def _strange(rest: str) -> str:
     if rest[0] == "^":
         return "'^' is not allowed; write ** for powers"
-    if number := re.match(r"[\d.]+[A-Za-z_]\w*", rest):
+    if number := re.match(r"\.?\d[\w.]*", rest):
         return f"{number[0][:20]!r} is neither a number nor a name; write * between factors"
     return f"{rest[0]!r} is not allowed; use numbers, names, + - * / **, parentheses and functions"
 

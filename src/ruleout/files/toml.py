@@ -31,7 +31,7 @@ def read_toml(path: Path) -> tuple[dict[str, Any], dict[str, int]]:
     """
     text = read_text(path, limit=LARGEST)
     try:
-        return tomllib.loads(text), dict(_fields(text))
+        return tomllib.loads(text), _lines(text)
     except tomllib.TOMLDecodeError as error:
         found = _ERROR_PLACE.search(str(error))
         line = found[1] if found and found[1] else text.count("\n") + 1
@@ -58,23 +58,34 @@ def place(path: Path | str, lines: Mapping[str, int], field: str) -> str:
     return f"{path}:{line}: {field}" if line else f"{path}: {field}"
 
 
-def _fields(text: str) -> Iterator[tuple[str, int]]:
-    """Yield every dotted field of a valid TOML text with its line, tables included."""
+def _lines(text: str) -> dict[str, int]:
+    """Return the line of every dotted field; a table never opened has that of its first field."""
+    lines: dict[str, int] = {}
+    for parts, line in _fields(text):
+        for depth in range(1, len(parts)):
+            lines.setdefault(".".join(parts[:depth]), line)
+        lines[".".join(parts)] = line
+    return lines
+
+
+def _fields(text: str) -> Iterator[tuple[tuple[str, ...], int]]:
+    """Yield the keys of every field of a valid TOML text with its line, tables included."""
     table: tuple[str, ...] = ()
-    at = 0
+    at, counted, line = 0, 0, 1
     while at < len(text):
         if blank := _BLANK.match(text, at):
             at = blank.end()
             continue
-        line = text.count("\n", 0, at) + 1
+        line += text.count("\n", counted, at)
+        counted = at
         if text[at] == "[":
             at += 2 if text.startswith("[[", at) else 1
             table, at = _dotted(text, at)
-            yield ".".join(table), line
+            yield table, line
             at = _line_end(text, at)
         else:
             key, at = _dotted(text, at)
-            yield ".".join(table + key), line
+            yield table + key, line
             at = _value_end(text, at)
 
 
