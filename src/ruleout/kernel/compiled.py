@@ -15,7 +15,7 @@ from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.memory import Lanes, Rows, new_lanes
 from ruleout.kernel.reference import Tape
-from ruleout.kernel.schedule import Integers, Schedule
+from ruleout.kernel.schedule import Integers, Plan, Schedule
 from ruleout.kernel.steps import Setting
 from ruleout.kernel.types import Array, Status
 
@@ -67,39 +67,40 @@ class CompiledBackend:
 
         size = len(y0)
         leads = which[::group]
-        begin = schedule.segment_at[leads]
         plan = schedule.plan
+        begin = plan.segment_at[leads]
         rows = Rows(
             y=y0.copy(),
             p=p,
-            which=which,
             states=np.full((size, schedule.outputs, self._outputs), np.nan),
-            status=np.full(size, RUNNING, dtype=np.int8),
-            t=schedule.breaks[begin],
-            h=np.zeros(len(leads)),
-            mark=np.zeros(len(leads)),
-            started=np.zeros(len(leads)),
+            status=np.full(size, RUNNING),
+            steps=np.zeros(size, dtype=np.int64),
+            which=leads,
             segment=begin - 1,
-            output=schedule.time_at[leads],
-            steps=np.zeros(size, dtype=np.int32),
+            output=plan.time_at[leads],
+            t=plan.breaks[begin],
+            h=np.zeros(len(leads)),
+            mark=np.empty(len(leads)),
+            started=np.empty(len(leads)),
         )
         vectors = _vectors(group, self._code.width)
+        most = float(max_steps)
 
         def run(groups: Integers) -> None:
             lanes = self._borrow(vectors)
             lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
             lanes.tolerance[len(Setting) :] = atol
             stiff = np.empty(len(groups), dtype=np.int64)
-            left = integrate(False, groups, group, lanes, plan, rows, max_steps, stiff)
+            left = integrate(False, groups, group, lanes, plan, rows, most, stiff)
             if left:
                 lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
-                integrate(True, stiff[:left], group, lanes, plan, rows, max_steps, stiff[:0])
+                integrate(True, stiff[:left], group, lanes, plan, rows, most, stiff[:0])
             self._give_back(lanes)
 
         _in_parallel(run, np.arange(len(leads)), _ROWS_PER_TASK // group + 1)
-        if schedule.endless.any():
-            self._end(rows, schedule)
-        return rows.states, rows.status, rows.steps
+        if schedule.ends_at_rest:
+            self._end(rows, plan, which)
+        return rows.states, rows.status.astype(np.int8), rows.steps.astype(np.int32)
 
     def steady(self, y0: Array, q: Array) -> tuple[Array, Flags]:
         """Return the states (R, N) that the flow from y0 settles at, and their status."""
@@ -121,14 +122,14 @@ class CompiledBackend:
             _in_parallel(run, np.arange(len(y0)), _ROWS_PER_TASK)
         return result, status
 
-    def _end(self, rows: Rows, schedule: Schedule) -> None:
+    def _end(self, rows: Rows, plan: Plan, which: Integers) -> None:
         """Carry rows whose protocol ends in a steady state there."""
-        at = np.flatnonzero(schedule.endless[rows.which] & (rows.status == Status.OK))
-        k = rows.which[at]
-        last = schedule.segment_at[k + 1] - 1
-        q = schedule.factor[last] * rows.p[at] + schedule.shift[last]
+        at = np.flatnonzero((plan.endless[which] == 1) & (rows.status == Status.OK))
+        k = which[at]
+        last = plan.segment_at[k + 1] - 1
+        q = plan.factor[last] * rows.p[at] + plan.shift[last]
         y, status = self.steady(rows.y[at], q)
-        rows.states[at, schedule.time_at[k + 1] - schedule.time_at[k]] = y[:, : self._outputs]
+        rows.states[at, plan.time_at[k + 1] - plan.time_at[k]] = y[:, : self._outputs]
         rows.status[at] = status
 
     def _borrow(self, vectors: int) -> Lanes:

@@ -7,18 +7,22 @@ trouble. The slot is then refilled at once. No lane's arithmetic depends on anot
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
-from numba import njit, types
-from numba.core import cgutils
-from numba.extending import intrinsic
+from numba import njit
 
-from ruleout.kernel.steps import Control
+from ruleout.kernel.pointers import invoke, read, read_int, write, write_int
+from ruleout.kernel.steps import STEP_FUNCTIONS, Control
 from ruleout.kernel.types import Status
 
-_START, _EXPLICIT, _IMPLICIT, _COMMIT_EXPLICIT, _COMMIT_IMPLICIT = range(5)
+_START = STEP_FUNCTIONS.index("start")
+_EXPLICIT = STEP_FUNCTIONS.index("explicit")
+_IMPLICIT = STEP_FUNCTIONS.index("implicit")
+_COMMIT_EXPLICIT = STEP_FUNCTIONS.index("commit_explicit")
+_COMMIT_IMPLICIT = STEP_FUNCTIONS.index("commit_implicit")
 
+_CONTROLS = len(Control)
 _TIME = int(Control.TIME)
 _STEP = int(Control.STEP)
 _STOP = int(Control.STOP)
@@ -37,6 +41,7 @@ _STEP_TOO_SMALL = int(Status.STEP_TOO_SMALL)
 _BAD_START = int(Status.BAD_START)
 _BLOW_UP = int(Status.BLOW_UP)
 RUNNING = -1
+_HAND_OVER = -2
 
 _STIFF_STEPS = 6.0
 _EXPLICIT_BUDGET = 400.0
@@ -45,231 +50,267 @@ _PROGRESS_EVERY = 1000.0
 _BLOW_UP_RATIO = 1e8
 
 
-@intrinsic
-def invoke(typing: Any, function: Any, blocks: Any, n: Any) -> Any:  # noqa: ARG001
-    """Call an emitted function with the addresses in ``blocks`` and the number of states."""
+class _Places(NamedTuple):
+    """Addresses and sizes of everything the driver touches."""
 
-    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
-        from llvmlite import ir
-
-        address, addresses, states = arguments
-        word = ir.IntType(64)
-        values = cgutils.unpack_tuple(builder, addresses, len(signature.args[1]))
-        kind = ir.FunctionType(word, [word] * (len(values) + 1))
-        callee = builder.inttoptr(address, kind.as_pointer())
-        return builder.call(callee, [*values, states])
-
-    return types.int64(types.int64, blocks, types.int64), generate
-
-
-@njit(cache=True, error_model="numpy")
-def addresses(lanes: Any, v: int) -> Any:
-    """Return where the blocks of vector ``v`` are, in the order the emitted functions expect."""
-    return (
-        np.int64(lanes.y.ctypes.data) + v * lanes.y.strides[0],
-        np.int64(lanes.new.ctypes.data) + v * lanes.new.strides[0],
-        np.int64(lanes.q.ctypes.data) + v * lanes.q.strides[0],
-        np.int64(lanes.c.ctypes.data) + v * lanes.c.strides[0],
-        np.int64(lanes.control.ctypes.data) + v * lanes.control.strides[0],
-        np.int64(lanes.tolerance.ctypes.data),
-        np.int64(lanes.scratch.ctypes.data),
-        np.int64(lanes.functions.ctypes.data),
-    )
-
-
-@njit(cache=True, error_model="numpy")
-def is_stuck(t: float, h: float) -> bool:
-    """Whether a step ``h`` would no longer move the time."""
-    return t + 0.01 * h == t or not h >= 1e-100
-
-
-@njit(cache=True, error_model="numpy")
-def is_finite(block: Any, n: int, w: int) -> bool:
-    """Whether the first ``n`` numbers in lane ``w`` are finite."""
-    for i in range(n):
-        if not np.isfinite(block[i, w]):
-            return False
-    return True
+    # Lanes
+    y: int
+    q: int
+    control: int
+    blocks: int
+    # Plan
+    segment_at: int
+    time_at: int
+    breaks: int
+    factor: int
+    shift: int
+    keep: int
+    add: int
+    times: int
+    endless: int
+    # Rows
+    row_y: int
+    row_p: int
+    states: int
+    status: int
+    steps: int
+    which: int
+    segment: int
+    output: int
+    t: int
+    h: int
+    mark: int
+    started: int
+    # Sizes
+    width: int
+    n: int
+    p: int
+    recorded: int
+    outputs: int
+    group: int
 
 
-@njit(cache=True, error_model="numpy")
-def largest(block: Any, n: int, w: int) -> float:
-    """Return the largest magnitude of the first ``n`` numbers in lane ``w``."""
+@njit(error_model="numpy")
+def _address(array: Any) -> int:
+    return np.int64(array.ctypes.data)
+
+
+@njit(error_model="numpy")
+def _control(at: _Places, lane: int, entry: int) -> float:
+    v, w = lane // at.width, lane % at.width
+    return read(at.control, (v * _CONTROLS + entry) * at.width + w)
+
+
+@njit(error_model="numpy")
+def _set_control(at: _Places, lane: int, entry: int, value: float) -> None:
+    v, w = lane // at.width, lane % at.width
+    write(at.control, (v * _CONTROLS + entry) * at.width + w, value)
+
+
+@njit(error_model="numpy")
+def _in_y(at: _Places, lane: int) -> int:
+    """Return the address of the first state in ``lane``; the next are ``width`` apart."""
+    v, w = lane // at.width, lane % at.width
+    return at.y + 8 * (v * 2 * at.n * at.width + w)
+
+
+@njit(error_model="numpy")
+def _is_finite(at: _Places, lane: int, count: int) -> bool:
+    y = _in_y(at, lane)
+    total = 0.0
+    for i in range(count):
+        total += read(y, i * at.width) * 0.0
+    return total == 0.0
+
+
+@njit(error_model="numpy")
+def _largest(at: _Places, lane: int) -> float:
+    y = _in_y(at, lane)
     size = 0.0
-    for i in range(n):
-        size = max(size, abs(block[i, w]))
+    for i in range(at.n):
+        size = max(size, abs(read(y, i * at.width)))
     return size
 
 
-@njit(cache=True, error_model="numpy")
-def _end(plan: Any, k: int) -> float:
-    """Return when protocol ``k`` is over."""
-    last = plan.breaks[plan.segment_at[k + 1] - 1]
-    if plan.endless[k]:
-        return last
-    return plan.times[plan.time_at[k + 1] - 1]
+@njit(error_model="numpy")
+def _load_parameters(at: _Places, lane: int, b: int, s: int) -> None:
+    v, w = lane // at.width, lane % at.width
+    for i in range(at.p):
+        factor, shift = read(at.factor, s * at.p + i), read(at.shift, s * at.p + i)
+        value = factor * read(at.row_p, b * at.p + i) + shift
+        write(at.q, (v * at.p + i) * at.width + w, value)
 
 
-@njit(cache=True, error_model="numpy")
-def _arrive(slot: int, g: int, group: int, lanes: Any, plan: Any, rows: Any, stale: Any) -> bool:
+@njit(error_model="numpy")
+def _next_stop(at: _Places, k: int, s: int, o: int) -> float:
+    """Return the next time to stop at; infinity if protocol ``k`` is over."""
+    break_follows = s + 1 < read_int(at.segment_at, k + 1)
+    following = read(at.breaks, s + 1) if break_follows else np.inf
+    if o < read_int(at.time_at, k + 1):
+        return min(read(at.times, o), following)
+    return following if read_int(at.endless, k) else np.inf
+
+
+@njit(error_model="numpy")
+def _arrive(at: _Places, slot: int, g: int) -> bool:
     """Enter segments and note outputs due now; whether the group has finished."""
-    width = lanes.control.shape[2]
-    n = rows.y.shape[1]
-    lead = slot * group
-    t = lanes.control[lead // width, _TIME, lead % width]
-    k = rows.which[g * group]
-    last, end = plan.segment_at[k + 1], plan.time_at[k + 1]
-    s = rows.segment[g]
+    lead = slot * at.group
+    t = _control(at, lead, _TIME)
+    k = read_int(at.which, g)
+    first_output = read_int(at.time_at, k)
+    last, end = read_int(at.segment_at, k + 1), read_int(at.time_at, k + 1)
+    s = read_int(at.segment, g)
     entered = False
-    while s + 1 < last and plan.breaks[s + 1] <= t:
+    while s + 1 < last and read(at.breaks, s + 1) <= t:
         s += 1
         entered = True
-        for j in range(group):
-            v, w = (lead + j) // width, (lead + j) % width
-            for i in range(n):
-                lanes.y[v, i, w] = plan.keep[s, i] * lanes.y[v, i, w] + plan.add[s, i]
-    o = rows.output[g]
-    first = o
-    while o < end and plan.times[o] <= t:
+        for j in range(at.group):
+            y = _in_y(at, lead + j)
+            for i in range(at.n):
+                keep, add = read(at.keep, s * at.n + i), read(at.add, s * at.n + i)
+                write(y, i * at.width, keep * read(y, i * at.width) + add)
+    due = read_int(at.output, g)
+    o = due
+    while o < end and read(at.times, o) <= t:
         o += 1
-    for j in range(group):
-        v, w = (lead + j) // width, (lead + j) % width
-        b = g * group + j
+    stop = _next_stop(at, k, s, o)
+    for j in range(at.group):
+        lane, b = lead + j, g * at.group + j
+        _set_control(at, lane, _STOP, stop)
         if entered:
-            for i in range(rows.p.shape[1]):
-                lanes.q[v, i, w] = plan.factor[s, i] * rows.p[b, i] + plan.shift[s, i]
-            lanes.control[v, _FRESH, w] = 1.0
-            lanes.control[v, _STIFF_COUNT, w] = 0.0
-            lanes.control[v, _REJECTED, w] = 0.0
-            stale[v] = True
-        if rows.status[b] != RUNNING:
+            _load_parameters(at, lane, b, s)
+            _set_control(at, lane, _FRESH, 1.0)
+            _set_control(at, lane, _STIFF_COUNT, 0.0)
+            _set_control(at, lane, _REJECTED, 0.0)
+        if o == due or read_int(at.status, b) != RUNNING:
             continue
-        if o > first and not is_finite(lanes.y[v], n, w):
-            rows.status[b] = _BAD_START if entered else _BLOW_UP
+        if not _is_finite(at, lane, at.n):
+            write_int(at.status, b, _BAD_START if entered else _BLOW_UP)
             continue
-        for at in range(first, o):
-            for i in range(rows.states.shape[2]):
-                rows.states[b, at - plan.time_at[k], i] = lanes.y[v, i, w]
-    rows.segment[g] = s
-    rows.output[g] = o
-    following = plan.breaks[s + 1] if s + 1 < last else np.inf
-    if o < end:
-        stop = min(plan.times[o], following)
-    elif plan.endless[k] and s + 1 < last:
-        stop = following
-    else:
-        return True
-    for j in range(group):
-        v, w = (lead + j) // width, (lead + j) % width
-        lanes.control[v, _STOP, w] = stop
+        y = _in_y(at, lane)
+        for m in range(due - first_output, o - first_output):
+            for i in range(at.recorded):
+                place = (b * at.outputs + m) * at.recorded + i
+                write(at.states, place, read(y, i * at.width))
+    write_int(at.segment, g, s)
+    write_int(at.output, g, o)
+    return stop == np.inf
+
+
+@njit(error_model="numpy")
+def _enter(at: _Places, slot: int, g: int, limit: float) -> bool:
+    """Put a group into its lanes as it stands; whether it has finished already."""
+    for j in range(at.group):
+        lane, b = slot * at.group + j, g * at.group + j
+        y = _in_y(at, lane)
+        for i in range(at.n):
+            write(y, i * at.width, read(at.row_y, b * at.n + i))
+        for entry in range(_CONTROLS):
+            _set_control(at, lane, entry, 0.0)
+        steps = float(read_int(at.steps, b))
+        _set_control(at, lane, _TIME, read(at.t, g))
+        _set_control(at, lane, _STEP, read(at.h, g))
+        _set_control(at, lane, _STEPS, steps)
+        _set_control(at, lane, _STEP_LIMIT, steps + limit)
+        _set_control(at, lane, _LIVE, 1.0)
+    write(at.mark, g, read(at.t, g))
+    if read(at.h, g) == 0.0:
+        write(at.started, g, _largest(at, slot * at.group))
+        return _arrive(at, slot, g)
+    s = read_int(at.segment, g)
+    stop = _next_stop(at, read_int(at.which, g), s, read_int(at.output, g))
+    for j in range(at.group):
+        lane = slot * at.group + j
+        _load_parameters(at, lane, g * at.group + j, s)
+        _set_control(at, lane, _STOP, stop)
     return False
 
 
-@njit(cache=True, error_model="numpy")
-def _leave(slot: int, g: int, group: int, status: int, lanes: Any, rows: Any) -> None:
+@njit(error_model="numpy")
+def _leave(at: _Places, slot: int, g: int, status: int) -> None:
     """Take a group out of its lanes; rows that still ran get ``status``."""
-    width = lanes.control.shape[2]
-    for j in range(group):
-        v, w = (slot * group + j) // width, (slot * group + j) % width
-        b = g * group + j
-        if rows.status[b] == RUNNING:
-            rows.status[b] = status
-        rows.steps[b] = int(lanes.control[v, _STEPS, w])
-        for i in range(rows.y.shape[1]):
-            rows.y[b, i] = lanes.y[v, i, w]
-    v, w = slot * group // width, slot * group % width
-    rows.t[g] = lanes.control[v, _TIME, w]
-    rows.h[g] = lanes.control[v, _STEP, w]
+    for j in range(at.group):
+        lane, b = slot * at.group + j, g * at.group + j
+        if read_int(at.status, b) == RUNNING:
+            write_int(at.status, b, status)
+        write_int(at.steps, b, int(_control(at, lane, _STEPS)))
+        _set_control(at, lane, _LIVE, 0.0)
+        y = _in_y(at, lane)
+        for i in range(at.n):
+            write(at.row_y, b * at.n + i, read(y, i * at.width))
+    write(at.t, g, _control(at, slot * at.group, _TIME))
+    write(at.h, g, _control(at, slot * at.group, _STEP))
 
 
-@njit(cache=True, error_model="numpy")
-def _enter(slot: int, g: int, group: int, limit: float, lanes: Any, rows: Any) -> None:
-    """Put a group into its lanes as it stands."""
-    width = lanes.control.shape[2]
-    for j in range(group):
-        v, w = (slot * group + j) // width, (slot * group + j) % width
-        b = g * group + j
-        for i in range(rows.y.shape[1]):
-            lanes.y[v, i, w] = rows.y[b, i]
-        control = lanes.control[v]
-        control[:, w] = 0.0
-        control[_TIME, w] = rows.t[g]
-        control[_STEP, w] = rows.h[g]
-        control[_STEPS, w] = rows.steps[b]
-        control[_STEP_LIMIT, w] = rows.steps[b] + limit
-        control[_LIVE, w] = 1.0
-    rows.mark[g] = rows.t[g]
-    v, w = slot * group // width, slot * group % width
-    if rows.steps[g * group] == 0:
-        rows.started[g] = largest(lanes.y[v], rows.y.shape[1], w)
-
-
-@njit(cache=True, error_model="numpy")
-def _resume(slot: int, g: int, group: int, lanes: Any, plan: Any, rows: Any, stale: Any) -> None:
-    """Put the parameters in force and the next stop of a group under way into its lanes."""
-    width = lanes.control.shape[2]
-    k = rows.which[g * group]
-    s, o = rows.segment[g], rows.output[g]
-    stop = plan.breaks[s + 1] if s + 1 < plan.segment_at[k + 1] else np.inf
-    if o < plan.time_at[k + 1]:
-        stop = min(stop, plan.times[o])
-    for j in range(group):
-        v, w = (slot * group + j) // width, (slot * group + j) % width
-        for i in range(rows.p.shape[1]):
-            p = rows.p[g * group + j, i]
-            lanes.q[v, i, w] = plan.factor[s, i] * p + plan.shift[s, i]
-        lanes.control[v, _STOP, w] = stop
-        stale[v] = True
-
-
-@njit(cache=True, error_model="numpy")
-def _verdict(
-    implicit: bool, slot: int, g: int, group: int, lanes: Any, plan: Any, rows: Any, most: int
-) -> int:
-    """What a group that has not arrived needs: go on (-1), hand over (-2) or fail (a status)."""
-    width = lanes.control.shape[2]
-    v, w = slot * group // width, slot * group % width
-    control = lanes.control[v]
-    t = control[_TIME, w]
-    if is_stuck(t, control[_STEP, w]):
-        grown = largest(lanes.y[v], rows.y.shape[1], w) > _BLOW_UP_RATIO * (1.0 + rows.started[g])
+@njit(error_model="numpy")
+def _verdict(at: _Places, implicit: bool, slot: int, g: int, most: float) -> int:
+    """What a group that has not arrived needs: go on, hand over, or fail with a status."""
+    lead = slot * at.group
+    t, h, steps = _control(at, lead, _TIME), _control(at, lead, _STEP), _control(at, lead, _STEPS)
+    stiff = _control(at, lead, _STIFF_COUNT)
+    if t + 0.01 * h == t or not h >= 1e-100:
+        grown = _largest(at, lead) > _BLOW_UP_RATIO * (1.0 + read(at.started, g))
         return _BLOW_UP if grown else _STEP_TOO_SMALL
-    steps = control[_STEPS, w]
     if steps >= most:
         return _TOO_MANY_STEPS
-    if not implicit and control[_STIFF_COUNT, w] >= _STIFF_STEPS:
-        return -2
-    if steps < control[_STEP_LIMIT, w]:
+    if not implicit and stiff >= _STIFF_STEPS:
+        return _HAND_OVER
+    if steps < _control(at, lead, _STEP_LIMIT):
         return RUNNING
-    k = rows.which[g * group]
-    begin, end = plan.breaks[plan.segment_at[k]], _end(plan, k)
+    k = read_int(at.which, g)
+    begin = read(at.breaks, read_int(at.segment_at, k))
+    end = read(at.breaks, read_int(at.segment_at, k + 1) - 1)
+    if not read_int(at.endless, k):
+        end = read(at.times, read_int(at.time_at, k + 1) - 1)
     if implicit:
-        gained = t - rows.mark[g]
-        if gained < 0.005 * (end - rows.mark[g]) and gained < 0.5 * (rows.mark[g] - begin):
+        mark = read(at.mark, g)
+        if t - mark < min(0.005 * (end - mark), 0.5 * (mark - begin)):
             return _TOO_MANY_STEPS
-        rows.mark[g] = t
-        extra = _PROGRESS_EVERY
+        write(at.mark, g, t)
+        steps += _PROGRESS_EVERY
     else:
-        projected = steps * (end - begin)
-        if control[_STIFF_COUNT, w] >= 1.0 or projected > _EXPLICIT_PATIENCE * (t - begin):
-            return -2
-        extra = _EXPLICIT_BUDGET
-    for j in range(group):
-        v, w = (slot * group + j) // width, (slot * group + j) % width
-        lanes.control[v, _STEP_LIMIT, w] = min(steps + extra, float(most))
+        if stiff >= 1.0 or steps * (end - begin) > _EXPLICIT_PATIENCE * (t - begin):
+            return _HAND_OVER
+        steps += _EXPLICIT_BUDGET
+    for j in range(at.group):
+        _set_control(at, lead + j, _STEP_LIMIT, min(steps, most))
     return RUNNING
 
 
-@njit(cache=True, error_model="numpy")
-def _share(group: int, slots: int, lanes: Any, first: int, last: int) -> None:
+@njit(error_model="numpy")
+def _share(at: _Places, slots: int, first: int, last: int) -> None:
     """Let every lane of a group have what its leader found, for control entries first..last."""
-    width = lanes.control.shape[2]
     for slot in range(slots):
-        lead = slot * group
+        lead = slot * at.group
         for entry in range(first, last + 1):
-            value = lanes.control[lead // width, entry, lead % width]
-            for lane in range(lead + 1, lead + group):
-                lanes.control[lane // width, entry, lane % width] = value
+            value = _control(at, lead, entry)
+            for lane in range(lead + 1, lead + at.group):
+                _set_control(at, lane, entry, value)
+
+
+@njit(error_model="numpy")
+def _prepare(at: _Places, start: int, vectors: int, slots: int, holds: int) -> int:
+    """Make lanes that were filled or changed ready to step; how many groups cannot start."""
+    for v in range(vectors):
+        invoke(start, at.blocks + 64 * v, at.n)
+    if at.group > 1:
+        _share(at, slots, _STEP, _STEP)
+    bad = 0
+    for slot in range(slots):
+        g = read_int(holds, slot)
+        lead = slot * at.group
+        if g < 0 or _control(at, lead, _FRESH) == 0.0:
+            continue
+        for j in range(at.group):
+            lane, b = lead + j, g * at.group + j
+            _set_control(at, lane, _FRESH, 0.0)
+            if read_int(at.status, b) == RUNNING and not _is_finite(at, lane, 2 * at.n):
+                write_int(at.status, b, _BAD_START)
+        if read_int(at.status, g * at.group) == _BAD_START:
+            _leave(at, slot, g, _BAD_START)
+            write_int(holds, slot, -1)
+            bad += 1
+    return bad
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -280,123 +321,114 @@ def integrate(
     lanes: Any,
     plan: Any,
     rows: Any,
-    most: int,
+    most: float,
     handed_over: Any,
 ) -> int:
-    """Run the groups in ``queue``; return how many were written to ``handed_over``."""
-    vectors, width = lanes.control.shape[0], lanes.control.shape[2]
-    slots = vectors * width // group
-    n = rows.y.shape[1]
+    """Run the groups in ``queue``; return how many were written to ``handed_over``.
+
+    Parameters
+    ----------
+    implicit : bool
+        Which of the two methods.
+    queue, handed_over : int64 arrays
+        Numbers of groups of ``group`` rows. The explicit method hands over what it finds stiff.
+    lanes : Lanes
+    plan : Plan
+    rows : Rows
+    most : float
+        Steps a row may take.
+    """
+    at = _Places(
+        _address(lanes.y),
+        _address(lanes.q),
+        _address(lanes.control),
+        _address(lanes.blocks),
+        _address(plan.segment_at),
+        _address(plan.time_at),
+        _address(plan.breaks),
+        _address(plan.factor),
+        _address(plan.shift),
+        _address(plan.keep),
+        _address(plan.add),
+        _address(plan.times),
+        _address(plan.endless),
+        _address(rows.y),
+        _address(rows.p),
+        _address(rows.states),
+        _address(rows.status),
+        _address(rows.steps),
+        _address(rows.which),
+        _address(rows.segment),
+        _address(rows.output),
+        _address(rows.t),
+        _address(rows.h),
+        _address(rows.mark),
+        _address(rows.started),
+        lanes.control.shape[2],
+        rows.y.shape[1],
+        rows.p.shape[1],
+        rows.states.shape[2],
+        rows.states.shape[1],
+        group,
+    )
+    vectors = lanes.control.shape[0]
+    slots = vectors * at.width // group
+    start = lanes.steps[_START]
     attempt = lanes.steps[_IMPLICIT if implicit else _EXPLICIT]
     commit = lanes.steps[_COMMIT_IMPLICIT if implicit else _COMMIT_EXPLICIT]
-    limit = min(_PROGRESS_EVERY if implicit else _EXPLICIT_BUDGET, float(most))
-    holds = np.full(slots, -1, dtype=np.int64)
-    vacant = np.ones(slots, dtype=np.bool_)
-    stale = np.zeros(vectors, dtype=np.bool_)
+    limit = min(_PROGRESS_EVERY if implicit else _EXPLICIT_BUDGET, most)
     lanes.control[:] = 0.0
-    lanes.control[:, _STOP] = np.inf
+    lanes.holds[:] = -1
+    holds = _address(lanes.holds)
     following, left, busy = 0, 0, 0
-    look = True
+    refill, changed = True, False
     while True:
-        while look:
-            look = False
-            for slot in range(slots):
-                while vacant[slot] and following < len(queue):
-                    g = queue[following]
-                    following += 1
-                    _enter(slot, g, group, limit, lanes, rows)
-                    if rows.h[g] > 0.0:
-                        _resume(slot, g, group, lanes, plan, rows, stale)
-                        vacant[slot] = False
-                    else:
-                        vacant[slot] = _arrive(slot, g, group, lanes, plan, rows, stale)
-                    if vacant[slot]:
-                        _leave(slot, g, group, _OK, lanes, rows)
-                    else:
-                        holds[slot] = g
-                        busy += 1
-                if vacant[slot]:
-                    for lane in range(slot * group, (slot + 1) * group):
-                        lanes.control[lane // width, _LIVE, lane % width] = 0.0
-            for v in range(vectors):
-                if stale[v]:
-                    invoke(lanes.steps[_START], addresses(lanes, v), n)
-            if group > 1:
-                _share(group, slots, lanes, _STEP, _STEP)
-            for slot in range(slots):
-                lead = slot * group
-                if vacant[slot] or lanes.control[lead // width, _FRESH, lead % width] == 0.0:
-                    continue
-                for lane in range(lead, lead + group):
-                    v, w = lane // width, lane % width
-                    lanes.control[v, _FRESH, w] = 0.0
-                    b = holds[slot] * group + lane - lead
-                    if rows.status[b] == RUNNING and not is_finite(lanes.y[v], 2 * n, w):
-                        rows.status[b] = _BAD_START
-                if rows.status[holds[slot] * group] == _BAD_START:
-                    _leave(slot, holds[slot], group, _BAD_START, lanes, rows)
-                    vacant[slot] = True
-                    holds[slot] = -1
-                    busy -= 1
-                    look = True
-            stale[:] = False
+        while refill or changed:
+            if refill:
+                for slot in range(slots):
+                    while read_int(holds, slot) < 0 and following < len(queue):
+                        g = queue[following]
+                        following += 1
+                        if _enter(at, slot, g, limit):
+                            _leave(at, slot, g, _OK)
+                        else:
+                            write_int(holds, slot, g)
+                            busy += 1
+            bad = _prepare(at, start, vectors, slots, holds)
+            busy -= bad
+            refill, changed = bad > 0, False
         if busy == 0:
             return left
         for v in range(vectors):
-            invoke(attempt, addresses(lanes, v), n)
+            invoke(attempt, at.blocks + 64 * v, at.n)
         if group > 1:
-            _share(group, slots, lanes, _ERROR, _STIFFNESS)
+            _share(at, slots, _ERROR, _STIFFNESS)
         for v in range(vectors):
-            bits = invoke(commit, addresses(lanes, v), n)
+            bits = invoke(commit, at.blocks + 64 * v, at.n)
+            w = -1
             while bits:
-                w = 0
-                while not (bits >> w) & 1:
-                    w += 1
-                bits &= bits - 1
-                lane = v * width + w
+                w += 1
+                flagged = bits & 1
+                bits >>= 1
+                lane = v * at.width + w
                 slot = lane // group
-                if lane % group or slot >= slots:
+                if not flagged or lane != slot * group:
                     continue
-                look |= _attend(
-                    implicit, slot, group, lanes, plan, rows, stale, most, holds, vacant
-                )
-        if look:
-            for slot in range(slots):
-                if vacant[slot] and holds[slot] >= 0:
-                    g = holds[slot]
-                    holds[slot] = -1
-                    busy -= 1
-                    if rows.status[g * group] == RUNNING:
+                g = read_int(holds, slot)
+                if _control(at, lane, _TIME) == _control(at, lane, _STOP):
+                    if not _arrive(at, slot, g):
+                        changed |= _control(at, lane, _FRESH) > 0.0
+                        continue
+                    verdict = _OK
+                else:
+                    verdict = _verdict(at, implicit, slot, g, most)
+                    if verdict == RUNNING:
+                        continue
+                    if verdict == _HAND_OVER:
+                        verdict = RUNNING
                         handed_over[left] = g
                         left += 1
-
-
-@njit(cache=True, error_model="numpy")
-def _attend(
-    implicit: bool,
-    slot: int,
-    group: int,
-    lanes: Any,
-    plan: Any,
-    rows: Any,
-    stale: Any,
-    most: int,
-    holds: Any,
-    vacant: Any,
-) -> bool:
-    """See to a group that asked for it; whether a slot became free or must be prepared anew."""
-    width = lanes.control.shape[2]
-    g = holds[slot]
-    v, w = slot * group // width, slot * group % width
-    if lanes.control[v, _TIME, w] == lanes.control[v, _STOP, w]:
-        if _arrive(slot, g, group, lanes, plan, rows, stale):
-            _leave(slot, g, group, _OK, lanes, rows)
-            vacant[slot] = True
-            return True
-        return lanes.control[v, _FRESH, w] > 0.0
-    verdict = _verdict(implicit, slot, g, group, lanes, plan, rows, most)
-    if verdict == RUNNING:
-        return False
-    _leave(slot, g, group, RUNNING if verdict == -2 else verdict, lanes, rows)
-    vacant[slot] = True
-    return True
+                _leave(at, slot, g, verdict)
+                write_int(holds, slot, -1)
+                busy -= 1
+                refill = True

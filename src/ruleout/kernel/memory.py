@@ -1,4 +1,4 @@
-"""The arrays that the driver works on."""
+"""The arrays that the driver works on, and the same as addresses."""
 
 from __future__ import annotations
 
@@ -19,23 +19,28 @@ class Lanes(NamedTuple):
     ----------
     y, new : (V, 2 N, W) arrays
     q : (V, P, W) array
-    c : (V, C, W) array
     control : (V, len(Control), W) array
     tolerance : (len(Setting) + N,) array
-    scratch : (S, W) array
+    blocks : (V, 8) int64 array
+        Addresses of the blocks of each vector, in the order of the emitted functions' arguments.
+    holds : (V * W,) int64 array
+        Group in each slot, -1 where there is none.
     functions, steps : int64 arrays
         Addresses of the system's functions and of the step functions.
+    rest : tuple of arrays
+        Memory that only the emitted functions use.
     """
 
     y: Array
     new: Array
     q: Array
-    c: Array
     control: Array
     tolerance: Array
-    scratch: Array
-    functions: Integers
+    blocks: Integers
+    holds: Integers
     steps: Integers
+    functions: Integers
+    rest: tuple[Array, Array]
 
 
 class Rows(NamedTuple):
@@ -46,29 +51,27 @@ class Rows(NamedTuple):
     y : (B, N) array
         States on entering and on leaving a lane.
     p : (B, P) array
-    which : (B,) int64 array
-    states : (B, M, N or more) array
+    states : (B, M, N or N - 1) array
         Outputs; a last state that is time is left out.
-    status : (B,) int8 array
+    status, steps : (B,) int64 arrays
+    which, segment, output : int64 arrays, one entry per group
+        Protocol, segment in force, next output.
     t, h, mark, started : arrays, one entry per group
         Time, step, time at the last look at progress, largest state at the start.
-    segment, output : int64 arrays, one entry per group
-        Segment in force, next output.
-    steps : (B,) int32 array
     """
 
     y: Array
     p: Array
-    which: Integers
     states: Array
-    status: np.ndarray[tuple[int, ...], np.dtype[np.int8]]
+    status: Integers
+    steps: Integers
+    which: Integers
+    segment: Integers
+    output: Integers
     t: Array
     h: Array
     mark: Array
     started: Array
-    segment: Integers
-    output: Integers
-    steps: np.ndarray[tuple[int, ...], np.dtype[np.int32]]
 
 
 def new_lanes(
@@ -82,17 +85,18 @@ def new_lanes(
     steps: Integers,
 ) -> Lanes:
     """Return zeroed memory for V = ``vectors`` vectors of ``width`` lanes."""
-    return Lanes(
-        y=_aligned(vectors, 2 * n, width),
-        new=_aligned(vectors, 2 * n, width),
-        q=_aligned(vectors, p, width),
-        c=_aligned(vectors, prepared, width),
-        control=_aligned(vectors, len(Control), width),
-        tolerance=np.zeros(len(Setting) + n),
-        scratch=_aligned(scratch, width),
-        functions=functions,
-        steps=steps,
+    y, new, q, c, control = (
+        _aligned(vectors, size, width) for size in (2 * n, 2 * n, p, prepared, len(Control))
     )
+    tolerance = np.zeros(len(Setting) + n)
+    shared = _aligned(scratch, width)
+    blocks = np.empty((vectors, 8), dtype=np.int64)
+    for v in range(vectors):
+        own = (block[v].ctypes.data for block in (y, new, q, c, control))
+        common = (block.ctypes.data for block in (tolerance, shared, functions))
+        blocks[v] = (*own, *common)
+    holds = np.empty(vectors * width, dtype=np.int64)
+    return Lanes(y, new, q, control, tolerance, blocks, holds, steps, functions, (c, shared))
 
 
 def _aligned(*shape: int) -> Array:

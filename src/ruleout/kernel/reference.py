@@ -99,9 +99,10 @@ class ReferenceBackend:
         with np.errstate(all="ignore"):
             run = _Run(self, y0, p, schedule, which, group)
             run.integrate(rtol, atol, max_steps)
-            ending = np.flatnonzero(schedule.endless[which] & (run.status == Status.OK))
+            plan = schedule.plan
+            ending = np.flatnonzero((plan.endless[which] == 1) & (run.status == Status.OK))
             if len(ending):
-                last = schedule.time_at[which[ending] + 1] - schedule.time_at[which[ending]]
+                last = plan.time_at[which[ending] + 1] - plan.time_at[which[ending]]
                 y, status = self.steady(run.y[ending], run.q[ending])
                 run.states[ending, last] = y
                 run.status[ending] = status
@@ -210,15 +211,16 @@ class _Run:
         group: int,
     ) -> None:
         rows, n = y0.shape
-        self.backend, self.schedule, self.which, self.p = backend, schedule, which, p
+        plan = schedule.plan
+        self.backend, self.plan, self.which, self.p = backend, plan, which, p
         self.y, self.q = y0.copy(), p.copy()
         self.leader = np.arange(rows) // group * group
         self.states = np.full((rows, schedule.outputs, n), np.nan)
         self.status = np.full(rows, _RUNNING, dtype=np.int8)
         self.steps = np.zeros(rows, dtype=np.int32)
-        self.segment = schedule.segment_at[which] - 1
-        self.output = schedule.time_at[which]
-        self.t = schedule.breaks[schedule.segment_at[which]].copy()
+        self.segment = plan.segment_at[which] - 1
+        self.output = plan.time_at[which]
+        self.t = plan.breaks[plan.segment_at[which]].copy()
         self.stop = np.empty(rows)
         self.h = np.zeros(rows)
 
@@ -254,29 +256,29 @@ class _Run:
 
     def _arrive(self, rows: NDArray[np.intp], rtol: float, atol: Array) -> None:
         """Enter segments and note outputs due at the rows' present times."""
-        schedule = self.schedule
+        plan = self.plan
         entered = []
         for b in rows:
             k = self.which[b]
             t = self.t[b]
-            last, end = schedule.segment_at[k + 1], schedule.time_at[k + 1]
+            last, end = plan.segment_at[k + 1], plan.time_at[k + 1]
             s = self.segment[b]
-            while s + 1 < last and schedule.breaks[s + 1] <= t:
+            while s + 1 < last and plan.breaks[s + 1] <= t:
                 s += 1
-                self.y[b] = schedule.keep[s] * self.y[b] + schedule.add[s]
-                self.q[b] = schedule.factor[s] * self.p[b] + schedule.shift[s]
+                self.y[b] = plan.keep[s] * self.y[b] + plan.add[s]
+                self.q[b] = plan.factor[s] * self.p[b] + plan.shift[s]
             if s != self.segment[b]:
                 self.segment[b] = s
                 entered.append(b)
             o = self.output[b]
-            while o < end and schedule.times[o] <= t:
-                self.states[b, o - schedule.time_at[k]] = self.y[b]
+            while o < end and plan.times[o] <= t:
+                self.states[b, o - plan.time_at[k]] = self.y[b]
                 o += 1
             self.output[b] = o
-            following = schedule.breaks[s + 1] if s + 1 < last else np.inf
+            following = plan.breaks[s + 1] if s + 1 < last else np.inf
             if o < end:
-                self.stop[b] = min(schedule.times[o], following)
-            elif schedule.endless[k] and s + 1 < last:
+                self.stop[b] = min(plan.times[o], following)
+            elif plan.endless[k] and s + 1 < last:
                 self.stop[b] = following
             else:
                 self.status[b] = Status.OK

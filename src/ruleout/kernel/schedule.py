@@ -15,22 +15,7 @@ Integers = NDArray[np.int64]
 
 
 class Plan(NamedTuple):
-    """The arrays of a schedule that the compiled driver reads."""
-
-    segment_at: Integers
-    time_at: Integers
-    breaks: Array
-    factor: Array
-    shift: Array
-    keep: Array
-    add: Array
-    times: Array
-    endless: NDArray[np.bool_]
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Schedule:
-    """All protocols of a call, packed.
+    """The numbers of all protocols of a call.
 
     Attributes
     ----------
@@ -43,10 +28,8 @@ class Schedule:
         N counts time as a state where the system is forced.
     times : (M,) array
         Finite output times.
-    endless : (K,) bool array
-        Whether the protocol ends in a steady state, and so passes all its breaks.
-    outputs : int
-        Largest number of output times of a protocol, the steady state included.
+    endless : (K,) int64 array
+        1 where the protocol ends in a steady state, and so passes all its breaks; else 0.
     """
 
     segment_at: Integers
@@ -57,13 +40,25 @@ class Schedule:
     keep: Array
     add: Array
     times: Array
-    endless: NDArray[np.bool_]
-    outputs: int
+    endless: Integers
 
-    @property
-    def plan(self) -> Plan:
-        """The arrays alone."""
-        return Plan(*(getattr(self, name) for name in Plan._fields))
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Schedule:
+    """All protocols of a call, packed.
+
+    Attributes
+    ----------
+    plan : Plan
+    outputs : int
+        Largest number of output times of a protocol, the steady state included.
+    ends_at_rest : bool
+        Whether any protocol ends in a steady state.
+    """
+
+    plan: Plan
+    outputs: int
+    ends_at_rest: bool
 
 
 def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced: bool) -> Schedule:
@@ -83,7 +78,8 @@ def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced
         keep = np.hstack([keep, np.zeros_like(starts)])
         add = np.hstack([add, starts])
     finite = [p.times[np.isfinite(p.times)] for p in protocols]
-    return Schedule(
+    endless = [len(f) < len(p.times) for f, p in zip(finite, protocols, strict=True)]
+    plan = Plan(
         segment_at=_offsets([len(p.breaks) for p in protocols]),
         time_at=_offsets([len(times) for times in finite]),
         breaks=_packed([p.breaks for p in protocols]),
@@ -92,9 +88,9 @@ def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced
         keep=np.ascontiguousarray(keep, dtype=float),
         add=np.ascontiguousarray(add, dtype=float),
         times=_packed(finite),
-        endless=np.array([len(f) < len(p.times) for f, p in zip(finite, protocols, strict=True)]),
-        outputs=max(len(p.times) for p in protocols),
+        endless=np.array(endless, dtype=np.int64),
     )
+    return Schedule(plan, max(len(p.times) for p in protocols), any(endless))
 
 
 def _offsets(counts: list[int]) -> Integers:

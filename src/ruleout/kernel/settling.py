@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numba import njit
 
-from ruleout.kernel.driver import addresses, invoke, is_finite, is_stuck, largest
+from ruleout.kernel.pointers import invoke
 from ruleout.kernel.steps import STEP_FUNCTIONS, Control
 from ruleout.kernel.types import Status
 
@@ -63,6 +63,7 @@ def settle(
     holds = np.full(width, -1, dtype=np.int64)
     started = np.zeros(width)
     control = lanes.control[0]
+    blocks = np.int64(lanes.blocks.ctypes.data)
     control[:] = 0.0
     control[_STOP] = np.inf
     following, busy = first, 0
@@ -85,7 +86,7 @@ def settle(
                     lanes.y[0, i, w] = y0[b, i]
                 for i in range(q.shape[1]):
                     lanes.q[0, i, w] = q[b, i]
-                started[w] = largest(lanes.y[0], n, w)
+                started[w] = np.abs(y0[b]).max()
                 control[:, w] = 0.0
                 control[_STOP, w] = np.inf
                 control[_STEP_LIMIT, w] = STEADY_STEPS
@@ -94,20 +95,20 @@ def settle(
                 control[_FRESH, w] = 1.0
             if not look:
                 break
-            invoke(lanes.steps[_START], addresses(lanes, 0), n)
+            invoke(lanes.steps[_START], blocks, n)
             look = False
             for w in range(width):
                 if control[_FRESH, w] > 0.0:
                     control[_FRESH, w] = 0.0
-                    if not is_finite(lanes.y[0], 2 * n, w):
+                    if not np.isfinite(lanes.y[0, :, w]).all():
                         status[holds[w]] = _BAD_START
                         holds[w] = -1
                         busy -= 1
                         look = True
         if busy == 0:
             return
-        invoke(lanes.steps[_IMPLICIT], addresses(lanes, 0), n)
-        bits = invoke(lanes.steps[_COMMIT], addresses(lanes, 0), n)
+        invoke(lanes.steps[_IMPLICIT], blocks, n)
+        bits = invoke(lanes.steps[_COMMIT], blocks, n)
         if bits == 0:
             continue
         near = _near(bits, lanes)
@@ -117,7 +118,8 @@ def settle(
             if (bits >> w) & 1 == 0:
                 continue
             if status[holds[w]] != _OK:
-                lost = is_stuck(control[_TIME, w], control[_STEP, w])
+                t, h = control[_TIME, w], control[_STEP, w]
+                lost = t + 0.01 * h == t or not h >= 1e-100
                 lost |= control[_STEPS, w] >= control[_STEP_LIMIT, w]
                 if not lost:
                     continue
@@ -147,7 +149,7 @@ def _polish(
     width = lanes.control.shape[2]
     n = y0.shape[1]
     trial.q[0] = lanes.q[0]
-    trial.c[0] = lanes.c[0]
+    trial.rest[0][0] = lanes.rest[0][0]
     trial.y[0] = lanes.y[0]
     trial.control[0] = lanes.control[0]
     moved = np.full(width, np.inf)
@@ -159,7 +161,7 @@ def _polish(
     for iteration in range(_ITERATIONS):
         if near == 0:
             return
-        invoke(lanes.steps[_NEWTON], addresses(trial, 0), n)
+        invoke(lanes.steps[_NEWTON], np.int64(trial.blocks.ctypes.data), n)
         for w in range(width):
             if (near >> w) & 1 == 0:
                 continue
