@@ -199,6 +199,7 @@ def test_files_that_are_no_table(read: Read, raw: bytes, said: str) -> None:
     [
         ("step,1,rep,2\nstep,2,rep,3", "no point is measured twice"),
         ("step,1,rep,2\nstep,1,rep,2", "all replicates are equal"),
+        ("step,1,rep,2\nlater,1,rep,2\nlater,1,rep,3", "no point is measured twice"),
         ("later,1,y,2\nlater,2,y,2", "held out"),
     ],
 )

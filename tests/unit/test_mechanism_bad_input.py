@@ -120,6 +120,17 @@ SLIPS = {
         '[edge.e]\nfrom = { cold = 2 }\nto = "sensor"\neffect = "inhibits"', 1, "edge.e.from",
         "stoichiometry",
     ),
+    "regulator that rests below zero": (
+        '[node.x]\nkind = "input"\nresting = -1\n[edge.e]\nfrom = "x"\nto = "sensor"\n'
+        'effect = "inhibits"', 4, "edge.e.from", "0 or more",
+    ),
+    "two of one kind": (
+        '[edge.e]\nfrom = ["store", "store"]\neffect = "converts"', 1, "edge.e.from",
+        "{ store = 2 }",
+    ),
+    "a number too long to show": (
+        f'[node.x]\nkind = "pool"\nstart = 0x{"f" * 5000}', 2, "node.x.start", "too long",
+    ),
     "negative stoichiometry": (
         '[edge.e]\nfrom = { store = -2 }\neffect = "converts"', 1, "edge.e.from.store", "above 0",
     ),
@@ -212,6 +223,7 @@ SLIPS = {
         f'{COLD}effect = "inhibits"\nlaw = ["linear", "hill"]\ncontains = "hill > saturating"', 5,
         "edge.e.contains", "'saturating' is not one of",
     ),
+    "rule with a semicolon": ('[rule."a;b"]\ntogether = ["a", "a=absent"]', 0, "rule.a;b", "';'"),
     "rule without a kind": ("[rule.r]", 0, "rule.r", "exactly one"),
     "rule with two kinds": (
         '[rule.r]\ntogether = ["a", "e"]\nimplies = ["a", "e"]', 0, "rule.r", "exactly one",

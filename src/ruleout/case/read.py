@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from ruleout.case.conditions import check_condition
@@ -59,12 +59,14 @@ def read_case(folder: Path | str, require_data: bool = True) -> Case:
     folder = Path(folder)
     _check_folder(folder, require_data)
     data = folder / DATA if (folder / DATA).exists() else None
+    name = folder.resolve().name
     mechanism = read_mechanism(folder / MECHANISM)
+    mechanism = replace(mechanism, title=mechanism.title or name)
     experiments = read_experiments(folder / EXPERIMENTS, data)
     _check_together(Context(folder, mechanism, experiments, parameter_names(mechanism)))
     files = [folder / MECHANISM, folder / EXPERIMENTS, *([data] if data else [])]
     hashes = {file.name: hashlib.sha256(file.read_bytes()).hexdigest() for file in files}
-    return Case(folder.resolve().name, folder, mechanism, experiments, hashes)
+    return Case(name, folder, mechanism, experiments, hashes)
 
 
 def _check_folder(folder: Path, require_data: bool) -> None:

@@ -76,7 +76,11 @@ def read_data(
     _check_times(path, rows)
     _check_held_out(path, rows, conditions)
     for readout in readouts.values():
-        _check_readout(path, readout, [row for row in rows if row.readout == readout.name])
+        measured = [row for row in rows if row.readout == readout.name]
+        _check_readout(path, readout, measured)
+        if measured and readout.noise == "replicates":
+            fitted = [row for row in measured if not conditions[row.condition].hold_out]
+            _check_replicated(path, readout, fitted)
     columns = ("condition", "time", "readout", "value", "sd", "replicate")
     return pd.DataFrame({name: [getattr(row, name) for row in rows] for name in columns})
 
@@ -274,8 +278,6 @@ def _check_held_out(path: Path, rows: Sequence[Row], conditions: Mapping[str, Co
 
 
 def _check_readout(path: Path, readout: Readout, rows: Sequence[Row]) -> None:
-    if not rows:
-        return
     if readout.noise == "given":
         for row in rows:
             if math.isnan(row.sd):
@@ -296,37 +298,36 @@ def _check_readout(path: Path, readout: Readout, rows: Sequence[Row]) -> None:
                     f"readout '{readout.name}' treats replicates "
                     "as series or batches, so every row needs its replicate's label",
                 )
-    low = -math.inf if readout.detection_limit is None else readout.detection_limit
-    high = math.inf if readout.detection_ceiling is None else readout.detection_ceiling
     if readout.family == "lognormal":
+        limit = -math.inf if readout.detection_limit is None else readout.detection_limit
         for row in rows:
-            if low < row.value <= 0 or (row.value <= 0 and math.isinf(low)):
+            if limit < row.value <= 0:
                 _refuse(
                     path,
                     row.line,
                     "value",
-                    f"{row.value:g} was given; readout "
-                    f"'{readout.name}' is lognormal, so values are above 0 (or at or below a "
-                    "detection_limit)",
+                    f"{row.value:g} was given; readout '{readout.name}' is lognormal, so values "
+                    "are above 0 (or at or below a detection_limit)",
                 )
-    if readout.noise == "replicates":
-        _check_replicated(path, readout, [row for row in rows if low < row.value < high])
 
 
 def _check_replicated(path: Path, readout: Readout, rows: Sequence[Row]) -> None:
-    values: dict[tuple[str, float, str], set[float]] = {}
-    counts = Counter(row.point for row in rows)
+    """Raise InputError where uncensored, fitted replicates say nothing about the noise."""
+    low = -math.inf if readout.detection_limit is None else readout.detection_limit
+    high = math.inf if readout.detection_ceiling is None else readout.detection_ceiling
+    points: dict[tuple[str, float, str], list[float]] = {}
     for row in rows:
-        values.setdefault(row.point, set()).add(row.value)
-    if max(counts.values(), default=0) < 2:
+        if low < row.value < high:
+            points.setdefault(row.point, []).append(row.value)
+    repeated = [values for values in points.values() if len(values) > 1]
+    trouble = ""
+    if not repeated:
+        trouble = "no point is measured twice"
+    elif all(len(set(values)) == 1 for values in repeated):
+        trouble = "all replicates are equal"
+    if trouble:
         raise InputError(
-            f"readout '{readout.name}' takes its noise from replicates, but no point is measured "
-            'twice; choose noise = "free" or "given"',
-            where=str(path),
-        )
-    if all(len(distinct) == 1 for distinct in values.values()):
-        raise InputError(
-            f"readout '{readout.name}' takes its noise from replicates, but all replicates are "
-            'equal; choose noise = "free" or "given"',
+            f"readout '{readout.name}' takes its noise from replicates, but {trouble} (held-out "
+            'and censored values aside); choose noise = "free" or "given"',
             where=str(path),
         )

@@ -21,7 +21,10 @@ def describe(value: object) -> str:
         return "a table"
     if isinstance(value, bool):
         return "true" if value else "false"
-    shown = repr(value)
+    try:
+        shown = repr(value)
+    except (ValueError, RecursionError):
+        return "a value too long to show"
     return shown if len(shown) <= 40 else f"{shown[:37]}..."
 
 
@@ -182,8 +185,11 @@ class Section:
         """Return ``value`` as a time of at least 0 or ``inf``."""
         return math.inf if value == math.inf else self.as_number(key, value, low=0.0)
 
-    def names(self, key: str, *, single: bool = False) -> tuple[str, ...]:
-        """Return a list of distinct names (with ``single``, one name alone is a list of one)."""
+    def names(self, key: str, *, single: bool = False, twice: str = "") -> tuple[str, ...]:
+        """Return a list of distinct names (with ``single``, one name alone is a list of one).
+
+        ``twice`` is what to do, with ``{name}``, where a name is repeated.
+        """
         value = self.values.get(key, [])
         if single and isinstance(value, str):
             value = [value]
@@ -191,7 +197,7 @@ class Section:
             self.fail(key, f"{describe(value)} was given; a list of names is expected")
         for i, name in enumerate(value):
             if name in value[:i]:
-                self.fail(key, f"'{name}' is named twice")
+                self.fail(key, f"'{name}' is named twice{twice.format(name=name)}")
         return tuple(value)
 
     def course(self, key: str, value: object, what: str) -> tuple[tuple[float, float], ...]:

@@ -12,6 +12,8 @@ from ruleout.errors import InputError
 from ruleout.files.text import read_text
 
 LARGEST = 2_000_000
+DEEPEST = 8
+"""Levels of tables that get lines; a case needs five."""
 _STRING = re.compile(
     r'"""(?:\\.|[^\\])*?"{3,5}|\'\'\'.*?\'{3,5}|"(?:\\.|[^"\\\n])*"|\'[^\'\n]*\'', re.DOTALL
 )
@@ -62,7 +64,7 @@ def _lines(text: str) -> dict[str, int]:
     """Return the line of every dotted field; a table never opened has that of its first field."""
     lines: dict[str, int] = {}
     for parts, line in _fields(text):
-        for depth in range(1, len(parts)):
+        for depth in range(1, min(len(parts), DEEPEST)):
             lines.setdefault(".".join(parts[:depth]), line)
         lines[".".join(parts)] = line
     return lines

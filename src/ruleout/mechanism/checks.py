@@ -22,7 +22,15 @@ def check_edge(
                 table.fail(key, f"'{name}' is no node of this mechanism{near}{hint}")
     if edge.material:
         _check_material(edge, nodes, table)
-    elif edge.onto is not None:
+        return
+    source = nodes[edge.sources[0][0]]
+    if source.resting < 0:
+        table.fail(
+            "from",
+            f"'{source.name}' rests at {source.resting:g}; an input that stimulates or inhibits "
+            "is 0 or more",
+        )
+    if edge.onto is not None:
         _check_onto(edge, edges, table)
     else:
         _check_target(edge, nodes[edge.targets[0][0]], table)

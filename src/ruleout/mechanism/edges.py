@@ -140,7 +140,7 @@ def _read_side(table: Section, key: str) -> Side:
         if not value:
             table.fail(key, "the table is empty; name a node, or leave it out")
         return tuple((name, inner.number(name, above=0.0)) for name in value)
-    names = table.names(key, single=True)
+    names = table.names(key, single=True, twice="; for two of it write {{ {name} = 2 }}")
     if not names:
         table.fail(key, "the list is empty; name a node, or leave it out")
     return tuple((name, 1.0) for name in names)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Final, Literal, TypeVar
 
-from ruleout.files import Section, describe
+from ruleout.files import Section, check_label, describe
 from ruleout.mechanism.names import check_member
 from ruleout.mechanism.types import Claim, Edge, Node, Rule
 
@@ -43,6 +43,7 @@ def read_rule(
         At the first field that cannot be used.
     """
     table.only(RULES)
+    check_label(name, "rule", table.where())
     kind = _kind(table, RULES)
     members = table.names(kind)
     if len(members) < 2:
@@ -63,7 +64,8 @@ def read_claim(
         At the first field that cannot be used.
     """
     table.only(("text", *CLAIMS))
-    if name in nodes or name in edges:
+    check_label(name, "claim", table.where())
+    if name in edges or (name in nodes and nodes[name].contested):
         table.fail(
             "",
             f"'{name}' is also a node or an edge, whose own claim bears that name; "
