@@ -294,8 +294,11 @@ class Assembly:
             if name in self.bend.switched_nodes:
                 change = sym(f"on:{name}") * change
             rhs[name] = change
-        read = symbols(*rhs.values())
-        for edge in self.edges.values():
-            if f"{edge.name}:{edge.stages}" in read:
-                rhs.update(self.stages(edge))
+        chains = {f"{e.name}:{e.stages}": self.stages(e) for e in self.edges.values()}
+        used: set[str] = set()
+        while found := (symbols(*rhs.values()) & chains.keys()) - used:
+            used |= found
+            for last, chain in chains.items():
+                if last in found:
+                    rhs.update(chain)
         return rhs

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
-from math import inf
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from ruleout.equations.assembly import Assembly, Bend
 from ruleout.equations.courses import factor_at, level_at, piece_at
-from ruleout.equations.starts import node_start, owned, resting_level, stage_start
+from ruleout.equations.starts import node_start, owned, resting_level, state_start
 from ruleout.equations.types import Model, Setup, Start, Structure
 from ruleout.experiments.types import ALWAYS, Condition, Experiments
 from ruleout.expressions import ZERO, Expr, substitute, sym, symbols
@@ -88,14 +87,6 @@ def _main_system(model: Model, shape: Structure, condition: Condition) -> System
     return _system(model, equations, condition)
 
 
-def _state_start(model: Model, state: str, condition: Condition) -> Start:
-    wiring = model.variant.wiring
-    edge, stage, _ = state.partition(":")
-    if stage:
-        return stage_start(wiring.edges[edge], wiring, condition)
-    return node_start(wiring.nodes[state], condition)
-
-
 def _rest_system(model: Model, condition: Condition, states: Mapping[str, Start]) -> System | None:
     """Return the equations under which the states that start at rest settle.
 
@@ -119,7 +110,7 @@ def _rest_system(model: Model, condition: Condition, states: Mapping[str, Start]
     equations = Assembly(wiring, without_basal(model), Bend(levels, cut)).equations()
     held = {"time": ZERO}
     for name in [name for name in equations if ":" in name]:
-        start = _state_start(model, name, condition)
+        start = state_start(name, model.variant.wiring, condition)
         if start.value is not None:
             held[name] = sym(f"start:{name}") if name in states else start.value
             del equations[name]
@@ -140,10 +131,16 @@ class _Course:
     model: Model
     condition: Condition
 
+    def gone(self, name: str, time: float) -> bool:
+        """Return whether a node has been removed, or an edge cut, by a time."""
+        condition = self.condition
+        since = condition.remove.get(name, condition.cut.get(name))
+        return since is not None and since <= time
+
     def level(self, name: str, time: float) -> float:
         """Return the amount of an input, a clamped or a removed node at a time."""
         condition = self.condition
-        if condition.remove.get(name, inf) <= time:
+        if self.gone(name, time):
             return 0.0
         if name in condition.clamp:
             return condition.clamp[name]
@@ -156,13 +153,11 @@ class _Course:
         """Return the value of a special parameter from a break point on."""
         what, _, name = parameter.partition(":")
         if what == "on":
-            gone = self.condition.remove.get(name, self.condition.cut.get(name, inf))
-            return 0.0 if gone <= time else 1.0
-        gone = self.condition.remove.get(name, inf) <= time
+            return 0.0 if self.gone(name, time) else 1.0
         course = self.condition.inputs.get(name)
         if what in ("input", "slope") and course is not None and course.interpolated:
-            level, slope = (0.0, 0.0) if gone else piece_at(course, time)
-            return slope if what == "slope" else level - slope * time if slope else level
+            level, slope = (0.0, 0.0) if self.gone(name, time) else piece_at(course, time)
+            return slope if what == "slope" else level - slope * time
         return self.level(name, time)
 
     def factor(self, parameter: str, time: float) -> float:
@@ -193,9 +188,8 @@ def _protocol(system: System, course: _Course, times: Array) -> Protocol:
     keep = np.ones((len(breaks), len(system.states)))
     add = np.zeros_like(keep)
     for j, name in enumerate(system.states):
-        gone = course.condition.remove.get(name, inf)
         for i, b in enumerate(breaks):
-            if gone <= b:
+            if course.gone(name, b):
                 keep[i, j] = 0.0
             else:
                 doses = course.condition.add.get(name, ())
@@ -213,7 +207,7 @@ def _protocol(system: System, course: _Course, times: Array) -> Protocol:
 def _setup(model: Model, condition: Condition, read: Iterable[str], times: Array) -> Setup:
     course = _Course(model, condition)
     system = _main_system(model, structure(model, condition), condition)
-    states = {name: _state_start(model, name, condition) for name in system.states}
+    states = {name: state_start(name, model.variant.wiring, condition) for name in system.states}
     rest = _rest_system(model, condition, states)
     nodes = model.variant.wiring.nodes
     fixed = [n for n in dict.fromkeys((*nodes, *read)) if n not in states]

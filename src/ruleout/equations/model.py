@@ -5,7 +5,7 @@ from __future__ import annotations
 from ruleout.equations.assembly import Assembly
 from ruleout.equations.assumptions import assumptions
 from ruleout.equations.parameters import catalogue
-from ruleout.equations.starts import node_start, stage_start
+from ruleout.equations.starts import node_start, state_start
 from ruleout.equations.types import Model, Start
 from ruleout.experiments.types import Experiments
 from ruleout.expressions import symbols
@@ -58,11 +58,8 @@ def build(variant: Variant, mechanism: Mechanism, experiments: Experiments) -> M
         ``NAME@CONDITION`` in that condition's setup alone.
     """
     wiring = variant.wiring
-    assembly = Assembly(wiring, _fixed_at_zero(mechanism))
-    equations = assembly.equations()
-    starts = {name: node_start(wiring.nodes[name]) for name in equations if name in wiring.nodes}
-    for edge in wiring.edges.values():
-        starts.update(dict.fromkeys(assembly.stages(edge), stage_start(edge, wiring)))
+    equations = Assembly(wiring, _fixed_at_zero(mechanism)).equations()
+    starts = {name: state_start(name, wiring) for name in equations}
     used = {name for name in symbols(*equations.values()) if "." in name}
     used |= _start_symbols(wiring, starts, experiments)
     return Model(

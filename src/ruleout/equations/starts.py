@@ -41,7 +41,7 @@ def owned(value: Expr, condition: Condition) -> Expr:
     return renamed
 
 
-def stage_start(edge: Edge, wiring: Wiring, condition: Condition | None = None) -> Start:
+def _stage_start(edge: Edge, wiring: Wiring, condition: Condition | None) -> Start:
     """Return where the delay stages of an edge begin.
 
     Those of a regulating edge have settled at their source's level. Those of a material edge hold
@@ -52,3 +52,11 @@ def stage_start(edge: Edge, wiring: Wiring, condition: Condition | None = None) 
     if edge.material:
         return Start(True) if all(start.rest for start in starts) else Start(False, ZERO)
     return starts[0] if starts else Start(False, const(resting_level(sources[0], condition)))
+
+
+def state_start(state: str, wiring: Wiring, condition: Condition | None = None) -> Start:
+    """Return where a state, a node or a delay stage ``EDGE:i``, begins."""
+    name, stage, _ = state.partition(":")
+    if stage:
+        return _stage_start(wiring.edges[name], wiring, condition)
+    return node_start(wiring.nodes[name], condition)
