@@ -94,6 +94,7 @@ def test_data_may_be_missing_where_they_are_not_required(make: Make) -> None:
 
 def test_missing_folder_and_files(make: Make, tmp_path: Path) -> None:
     assert "there is no such folder" in refusal(tmp_path / "nowhere")
+    assert refusal(tmp_path / ("x" * 5000))
     folder = make()
     assert "this is a file" in refusal(folder / "data.csv")
     (folder / "experiments.toml").unlink()

@@ -57,7 +57,13 @@ def read_case(folder: Path | str, require_data: bool = True) -> Case:
         At the first thing that cannot be used, with file, line and field.
     """
     folder = Path(folder)
-    _check_folder(folder, require_data)
+    try:
+        _check_folder(folder, require_data)
+    except OSError as error:
+        raise InputError(
+            f"this folder cannot be read ({error.strerror}); give the folder of a case",
+            where=str(folder),
+        ) from error
     data = folder / DATA if (folder / DATA).exists() else None
     name = folder.resolve().name
     mechanism = read_mechanism(folder / MECHANISM)

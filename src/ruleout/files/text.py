@@ -28,6 +28,8 @@ def read_text(path: Path, *, limit: int) -> str:
         if path.is_dir():
             raise InputError("this is a folder; a file is expected here", where=str(path))
         size = path.stat().st_size
+        if not path.is_file():
+            raise InputError("this is no ordinary file", where=str(path))
         if size > limit:
             raise InputError(
                 f"the file has {size / 1e6:.1f} MB; at most {limit / 1e6:g} MB are read. "
