@@ -15,9 +15,9 @@ from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.memory import Lanes, Rows, new_lanes
 from ruleout.kernel.reference import Tape
-from ruleout.kernel.schedule import Integers, Plan, Schedule
+from ruleout.kernel.schedule import Integers, Plan, Schedule, pack
 from ruleout.kernel.steps import Setting
-from ruleout.kernel.types import Array, Status
+from ruleout.kernel.types import Array, Protocol, Status
 
 Flags = NDArray[np.int8]
 _STIFF_STEPS = 6.0
@@ -63,7 +63,7 @@ class CompiledBackend:
         max_steps: int,
     ) -> tuple[Array, Flags, NDArray[np.int32]]:
         """Return states (B, M, N), status and steps; see :meth:`Program.solve`."""
-        from ruleout.kernel.driver import RUNNING, integrate
+        from ruleout.kernel.driver import EXPLICIT, IMPLICIT, RUNNING, integrate
 
         size = len(y0)
         leads = which[::group]
@@ -91,10 +91,10 @@ class CompiledBackend:
             lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
             lanes.tolerance[len(Setting) :] = atol
             stiff = np.empty(len(groups), dtype=np.int64)
-            left = integrate(False, groups, group, lanes, plan, rows, most, stiff)
+            left = integrate(EXPLICIT, groups, group, lanes, plan, rows, most, stiff)
             if left:
                 lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
-                integrate(True, stiff[:left], group, lanes, plan, rows, most, stiff[:0])
+                integrate(IMPLICIT, stiff[:left], group, lanes, plan, rows, most, stiff[:0])
             self._give_back(lanes)
 
         _in_parallel(run, np.arange(len(leads)), _ROWS_PER_TASK // group + 1)
@@ -104,31 +104,59 @@ class CompiledBackend:
 
     def steady(self, y0: Array, q: Array) -> tuple[Array, Flags]:
         """Return the states (R, N) that the flow from y0 settles at, and their status."""
-        from ruleout.kernel.settling import STEADY_RTOL, settle
+        return self._settle(y0, q, self._unchanged, np.zeros(len(y0), dtype=np.int64))
 
-        result = np.full(y0.shape, np.nan)
-        status = np.full(len(y0), Status.NO_STEADY_STATE, dtype=np.int8)
+    @cached_property
+    def _unchanged(self) -> Plan:
+        """The plan in which parameters are as given and nothing is asked for but rest."""
+        protocol = Protocol(
+            breaks=np.zeros(1),
+            factor=np.ones((1, self._p)),
+            shift=np.zeros((1, self._p)),
+            keep=np.ones((1, self._n)),
+            add=np.zeros((1, self._n)),
+            times=np.array([np.inf]),
+        )
+        return pack([protocol], self._n, self._p, forced=False).plan
+
+    def _settle(self, y: Array, p: Array, plan: Plan, which: Integers) -> tuple[Array, Flags]:
+        """Return the steady states under the last segment of each row's protocol."""
+        from ruleout.kernel.driver import RUNNING, SETTLE, STEADY_FLOOR, STEADY_RTOL, integrate
+
+        size = len(y)
+        rows = Rows(
+            y=y,
+            p=p,
+            states=np.full((size, 1, self._n), np.nan),
+            status=np.full(size, RUNNING),
+            steps=np.zeros(size, dtype=np.int64),
+            which=which,
+            segment=plan.segment_at[which + 1] - 1,
+            output=plan.time_at[which + 1],
+            t=np.zeros(size),
+            h=np.zeros(size),
+            mark=np.empty(size),
+            started=np.empty(size),
+        )
 
         def run(part: Integers) -> None:
-            lanes, trial = self._borrow(1), self._borrow(1)
-            for memory in (lanes, trial):
-                memory.tolerance[:] = 0.0
-                memory.tolerance[: len(Setting)] = STEADY_RTOL, np.inf, 1.0, STEADY_RTOL * 1e-6
-            settle(part[0], part[-1] + 1, lanes, trial, y0, q, result, status)
+            lanes = self._borrow(1)
+            lanes.tolerance[:] = 0.0
+            lanes.tolerance[Setting.RTOL] = STEADY_RTOL
+            lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
+            lanes.tolerance[Setting.SETTLE_LIMIT] = 1.0
+            lanes.tolerance[Setting.FLOOR_FACTOR] = STEADY_RTOL * STEADY_FLOOR
+            integrate(SETTLE, part, 1, lanes, plan, rows, np.inf, part[:0])
             self._give_back(lanes)
-            self._give_back(trial)
 
-        if len(y0):
-            _in_parallel(run, np.arange(len(y0)), _ROWS_PER_TASK)
-        return result, status
+        _in_parallel(run, np.arange(size), _ROWS_PER_TASK)
+        return rows.states[:, 0], rows.status.astype(np.int8)
 
     def _end(self, rows: Rows, plan: Plan, which: Integers) -> None:
         """Carry rows whose protocol ends in a steady state there."""
         at = np.flatnonzero((plan.endless[which] == 1) & (rows.status == Status.OK))
         k = which[at]
-        last = plan.segment_at[k + 1] - 1
-        q = plan.factor[last] * rows.p[at] + plan.shift[last]
-        y, status = self.steady(rows.y[at], q)
+        y, status = self._settle(rows.y[at], rows.p[at], plan, k)
         rows.states[at, plan.time_at[k + 1] - plan.time_at[k]] = y[:, : self._outputs]
         rows.status[at] = status
 

@@ -10,9 +10,8 @@ from __future__ import annotations
 from typing import Any, NamedTuple
 
 import numpy as np
-from numba import njit
 
-from ruleout.kernel.pointers import invoke, read, read_int, write, write_int
+from ruleout.kernel.pointers import compiled, entry_point, invoke, read, read_int, write, write_int
 from ruleout.kernel.steps import STEP_FUNCTIONS, Control
 from ruleout.kernel.types import Status
 
@@ -21,6 +20,7 @@ _EXPLICIT = STEP_FUNCTIONS.index("explicit")
 _IMPLICIT = STEP_FUNCTIONS.index("implicit")
 _COMMIT_EXPLICIT = STEP_FUNCTIONS.index("commit_explicit")
 _COMMIT_IMPLICIT = STEP_FUNCTIONS.index("commit_implicit")
+_NEWTON = STEP_FUNCTIONS.index("newton")
 
 _CONTROLS = len(Control)
 _TIME = int(Control.TIME)
@@ -34,20 +34,37 @@ _STEP_LIMIT = int(Control.STEP_LIMIT)
 _LIVE = int(Control.LIVE)
 _REJECTED = int(Control.REJECTED)
 _FRESH = int(Control.FRESH)
+_SIZE = int(Control.SIZE)
+_FLOOR = int(Control.FLOOR)
+_SETTLING = int(Control.SETTLING)
 
 _OK = int(Status.OK)
 _TOO_MANY_STEPS = int(Status.TOO_MANY_STEPS)
 _STEP_TOO_SMALL = int(Status.STEP_TOO_SMALL)
 _BAD_START = int(Status.BAD_START)
 _BLOW_UP = int(Status.BLOW_UP)
+_NO_STEADY_STATE = int(Status.NO_STEADY_STATE)
 RUNNING = -1
 _HAND_OVER = -2
+
+EXPLICIT, IMPLICIT, SETTLE = 0, 1, 2
+"""Modes: Tsit5 until stiff, Rodas5P, and Rodas5P without end until the state is steady."""
 
 _STIFF_STEPS = 6.0
 _EXPLICIT_BUDGET = 400.0
 _EXPLICIT_PATIENCE = 8000.0
 _PROGRESS_EVERY = 1000.0
 _BLOW_UP_RATIO = 1e8
+
+STEADY_RTOL = 1e-4
+STEADY_FLOOR = 1e-6
+"""States below this part of the largest one count as zero while the flow is followed."""
+_STEADY_STEPS = 3000.0
+_STEADY_FIRST_TRY = 4.0
+_NEWTON_ITERATIONS = 12
+_NEWTON_NEAR = 1e-5
+_NEWTON_SETTLED = 1e-10
+_NEWTON_EXACT = 1e-14
 
 
 class _Places(NamedTuple):
@@ -58,6 +75,11 @@ class _Places(NamedTuple):
     q: int
     control: int
     blocks: int
+    newton_y: int
+    newton_start: int
+    newton_control: int
+    newton_blocks: int
+    holds: int
     # Plan
     segment_at: int
     time_at: int
@@ -90,31 +112,31 @@ class _Places(NamedTuple):
     group: int
 
 
-@njit(error_model="numpy")
+@compiled
 def _address(array: Any) -> int:
-    return np.int64(array.ctypes.data)
+    return np.int64(array.ctypes.data)  # type: ignore[return-value]
 
 
-@njit(error_model="numpy")
+@compiled
 def _control(at: _Places, lane: int, entry: int) -> float:
     v, w = lane // at.width, lane % at.width
     return read(at.control, (v * _CONTROLS + entry) * at.width + w)
 
 
-@njit(error_model="numpy")
+@compiled
 def _set_control(at: _Places, lane: int, entry: int, value: float) -> None:
     v, w = lane // at.width, lane % at.width
     write(at.control, (v * _CONTROLS + entry) * at.width + w, value)
 
 
-@njit(error_model="numpy")
+@compiled
 def _in_y(at: _Places, lane: int) -> int:
     """Return the address of the first state in ``lane``; the next are ``width`` apart."""
     v, w = lane // at.width, lane % at.width
     return at.y + 8 * (v * 2 * at.n * at.width + w)
 
 
-@njit(error_model="numpy")
+@compiled
 def _is_finite(at: _Places, lane: int, count: int) -> bool:
     y = _in_y(at, lane)
     total = 0.0
@@ -123,7 +145,7 @@ def _is_finite(at: _Places, lane: int, count: int) -> bool:
     return total == 0.0
 
 
-@njit(error_model="numpy")
+@compiled
 def _largest(at: _Places, lane: int) -> float:
     y = _in_y(at, lane)
     size = 0.0
@@ -132,7 +154,7 @@ def _largest(at: _Places, lane: int) -> float:
     return size
 
 
-@njit(error_model="numpy")
+@compiled
 def _load_parameters(at: _Places, lane: int, b: int, s: int) -> None:
     v, w = lane // at.width, lane % at.width
     for i in range(at.p):
@@ -141,7 +163,7 @@ def _load_parameters(at: _Places, lane: int, b: int, s: int) -> None:
         write(at.q, (v * at.p + i) * at.width + w, value)
 
 
-@njit(error_model="numpy")
+@compiled
 def _next_stop(at: _Places, k: int, s: int, o: int) -> float:
     """Return the next time to stop at; infinity if protocol ``k`` is over."""
     break_follows = s + 1 < read_int(at.segment_at, k + 1)
@@ -151,7 +173,7 @@ def _next_stop(at: _Places, k: int, s: int, o: int) -> float:
     return following if read_int(at.endless, k) else np.inf
 
 
-@njit(error_model="numpy")
+@compiled
 def _arrive(at: _Places, slot: int, g: int) -> bool:
     """Enter segments and note outputs due now; whether the group has finished."""
     lead = slot * at.group
@@ -197,8 +219,8 @@ def _arrive(at: _Places, slot: int, g: int) -> bool:
     return stop == np.inf
 
 
-@njit(error_model="numpy")
-def _enter(at: _Places, slot: int, g: int, limit: float) -> bool:
+@compiled
+def _enter(at: _Places, mode: int, slot: int, g: int, limit: float) -> bool:
     """Put a group into its lanes as it stands; whether it has finished already."""
     for j in range(at.group):
         lane, b = slot * at.group + j, g * at.group + j
@@ -214,8 +236,9 @@ def _enter(at: _Places, slot: int, g: int, limit: float) -> bool:
         _set_control(at, lane, _STEP_LIMIT, steps + limit)
         _set_control(at, lane, _LIVE, 1.0)
     write(at.mark, g, read(at.t, g))
-    if read(at.h, g) == 0.0:
-        write(at.started, g, _largest(at, slot * at.group))
+    size = _largest(at, slot * at.group)
+    if mode == EXPLICIT:
+        write(at.started, g, size)
         return _arrive(at, slot, g)
     s = read_int(at.segment, g)
     stop = _next_stop(at, read_int(at.which, g), s, read_int(at.output, g))
@@ -223,10 +246,14 @@ def _enter(at: _Places, slot: int, g: int, limit: float) -> bool:
         lane = slot * at.group + j
         _load_parameters(at, lane, g * at.group + j, s)
         _set_control(at, lane, _STOP, stop)
+        if mode == SETTLE:
+            _set_control(at, lane, _FLOOR, STEADY_RTOL * (STEADY_FLOOR * size + 1e-12))
+            _set_control(at, lane, _FRESH, 1.0)
+            write(at.started, g, size)
     return False
 
 
-@njit(error_model="numpy")
+@compiled
 def _leave(at: _Places, slot: int, g: int, status: int) -> None:
     """Take a group out of its lanes; rows that still ran get ``status``."""
     for j in range(at.group):
@@ -242,18 +269,33 @@ def _leave(at: _Places, slot: int, g: int, status: int) -> None:
     write(at.h, g, _control(at, slot * at.group, _STEP))
 
 
-@njit(error_model="numpy")
-def _verdict(at: _Places, implicit: bool, slot: int, g: int, most: float) -> int:
+@compiled
+def _is_lost(at: _Places, lane: int) -> bool:
+    """Whether steps have become too small to move the time."""
+    t, h = _control(at, lane, _TIME), _control(at, lane, _STEP)
+    return t + 0.01 * h == t or not h >= 1e-100
+
+
+@compiled
+def _has_grown(at: _Places, lane: int, g: int) -> bool:
+    return _largest(at, lane) > _BLOW_UP_RATIO * (1.0 + read(at.started, g))
+
+
+@compiled
+def _verdict(at: _Places, mode: int, slot: int, g: int, most: float) -> int:
     """What a group that has not arrived needs: go on, hand over, or fail with a status."""
     lead = slot * at.group
-    t, h, steps = _control(at, lead, _TIME), _control(at, lead, _STEP), _control(at, lead, _STEPS)
+    t, steps = _control(at, lead, _TIME), _control(at, lead, _STEPS)
     stiff = _control(at, lead, _STIFF_COUNT)
-    if t + 0.01 * h == t or not h >= 1e-100:
-        grown = _largest(at, lead) > _BLOW_UP_RATIO * (1.0 + read(at.started, g))
-        return _BLOW_UP if grown else _STEP_TOO_SMALL
+    if mode == SETTLE:
+        if _is_lost(at, lead) or steps >= _STEADY_STEPS:
+            return _BLOW_UP if _has_grown(at, lead, g) else _NO_STEADY_STATE
+        return RUNNING
+    if _is_lost(at, lead):
+        return _BLOW_UP if _has_grown(at, lead, g) else _STEP_TOO_SMALL
     if steps >= most:
         return _TOO_MANY_STEPS
-    if not implicit and stiff >= _STIFF_STEPS:
+    if mode == EXPLICIT and stiff >= _STIFF_STEPS:
         return _HAND_OVER
     if steps < _control(at, lead, _STEP_LIMIT):
         return RUNNING
@@ -262,7 +304,7 @@ def _verdict(at: _Places, implicit: bool, slot: int, g: int, most: float) -> int
     end = read(at.breaks, read_int(at.segment_at, k + 1) - 1)
     if not read_int(at.endless, k):
         end = read(at.times, read_int(at.time_at, k + 1) - 1)
-    if implicit:
+    if mode == IMPLICIT:
         mark = read(at.mark, g)
         if t - mark < min(0.005 * (end - mark), 0.5 * (mark - begin)):
             return _TOO_MANY_STEPS
@@ -277,7 +319,52 @@ def _verdict(at: _Places, implicit: bool, slot: int, g: int, most: float) -> int
     return RUNNING
 
 
-@njit(error_model="numpy")
+@compiled
+def _polish(at: _Places, newton: int, bits: int) -> None:
+    """Try Newton's method in the lanes of ``bits`` that are near a steady state.
+
+    Those whose first step is small and that converge are written out, with status OK.
+    """
+    near = 0
+    for lane in range(at.width):
+        _set_newton_control(at, lane, _STEP, _control(at, lane, _STEP))
+        _set_newton_control(at, lane, _FLOOR, _control(at, lane, _FLOOR) / STEADY_RTOL)
+        _set_newton_control(at, lane, _SIZE, np.inf)
+        g = read_int(at.holds, lane)
+        for i in range(at.n):
+            place = i * at.width + lane
+            write(at.newton_y, place, read(at.y, place))
+            write(at.newton_start, place, read(at.row_y, g * at.n + i) if g >= 0 else 0.0)
+        settled = _control(at, lane, _SETTLING) < 1.0
+        if (bits >> lane) & 1 and settled and _control(at, lane, _STEPS) >= _STEADY_FIRST_TRY:
+            near |= 1 << lane
+    for iteration in range(_NEWTON_ITERATIONS):
+        if near == 0:
+            return
+        invoke(newton, at.newton_blocks, at.n)
+        for lane in range(at.width):
+            if (near >> lane) & 1 == 0:
+                continue
+            moved = read(at.newton_control, _SETTLING * at.width + lane)
+            before = read(at.newton_control, _SIZE * at.width + lane)
+            _set_newton_control(at, lane, _SIZE, moved)
+            if iteration == 0 and not moved < _NEWTON_NEAR:
+                near &= ~(1 << lane)
+            elif moved < _NEWTON_EXACT or (moved < _NEWTON_SETTLED and not moved < 0.5 * before):
+                near &= ~(1 << lane)
+                g = read_int(at.holds, lane)
+                write_int(at.status, g, _OK)
+                for i in range(at.recorded):
+                    value = read(at.newton_y, i * at.width + lane)
+                    write(at.states, g * at.outputs * at.recorded + i, value)
+
+
+@compiled
+def _set_newton_control(at: _Places, lane: int, entry: int, value: float) -> None:
+    write(at.newton_control, entry * at.width + lane, value)
+
+
+@compiled
 def _share(at: _Places, slots: int, first: int, last: int) -> None:
     """Let every lane of a group have what its leader found, for control entries first..last."""
     for slot in range(slots):
@@ -288,8 +375,8 @@ def _share(at: _Places, slots: int, first: int, last: int) -> None:
                 _set_control(at, lane, entry, value)
 
 
-@njit(error_model="numpy")
-def _prepare(at: _Places, start: int, vectors: int, slots: int, holds: int) -> int:
+@compiled
+def _prepare(at: _Places, start: int, vectors: int, slots: int) -> int:
     """Make lanes that were filled or changed ready to step; how many groups cannot start."""
     for v in range(vectors):
         invoke(start, at.blocks + 64 * v, at.n)
@@ -297,7 +384,7 @@ def _prepare(at: _Places, start: int, vectors: int, slots: int, holds: int) -> i
         _share(at, slots, _STEP, _STEP)
     bad = 0
     for slot in range(slots):
-        g = read_int(holds, slot)
+        g = read_int(at.holds, slot)
         lead = slot * at.group
         if g < 0 or _control(at, lead, _FRESH) == 0.0:
             continue
@@ -308,14 +395,14 @@ def _prepare(at: _Places, start: int, vectors: int, slots: int, holds: int) -> i
                 write_int(at.status, b, _BAD_START)
         if read_int(at.status, g * at.group) == _BAD_START:
             _leave(at, slot, g, _BAD_START)
-            write_int(holds, slot, -1)
+            write_int(at.holds, slot, -1)
             bad += 1
     return bad
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@entry_point
 def integrate(
-    implicit: bool,
+    mode: int,
     queue: Any,
     group: int,
     lanes: Any,
@@ -328,8 +415,8 @@ def integrate(
 
     Parameters
     ----------
-    implicit : bool
-        Which of the two methods.
+    mode : int
+        EXPLICIT, IMPLICIT or SETTLE (in which groups are single rows).
     queue, handed_over : int64 arrays
         Numbers of groups of ``group`` rows. The explicit method hands over what it finds stiff.
     lanes : Lanes
@@ -343,6 +430,11 @@ def integrate(
         _address(lanes.q),
         _address(lanes.control),
         _address(lanes.blocks),
+        _address(lanes.newton_y),
+        _address(lanes.newton_start),
+        _address(lanes.newton_control),
+        _address(lanes.newton_blocks),
+        _address(lanes.holds),
         _address(plan.segment_at),
         _address(plan.time_at),
         _address(plan.breaks),
@@ -374,27 +466,27 @@ def integrate(
     vectors = lanes.control.shape[0]
     slots = vectors * at.width // group
     start = lanes.steps[_START]
-    attempt = lanes.steps[_IMPLICIT if implicit else _EXPLICIT]
-    commit = lanes.steps[_COMMIT_IMPLICIT if implicit else _COMMIT_EXPLICIT]
-    limit = min(_PROGRESS_EVERY if implicit else _EXPLICIT_BUDGET, most)
+    attempt = lanes.steps[_EXPLICIT if mode == EXPLICIT else _IMPLICIT]
+    commit = lanes.steps[_COMMIT_EXPLICIT if mode == EXPLICIT else _COMMIT_IMPLICIT]
+    limit = _EXPLICIT_BUDGET if mode == EXPLICIT else _PROGRESS_EVERY
+    limit = _STEADY_STEPS if mode == SETTLE else min(limit, most)
     lanes.control[:] = 0.0
     lanes.holds[:] = -1
-    holds = _address(lanes.holds)
     following, left, busy = 0, 0, 0
     refill, changed = True, False
     while True:
         while refill or changed:
             if refill:
                 for slot in range(slots):
-                    while read_int(holds, slot) < 0 and following < len(queue):
+                    while read_int(at.holds, slot) < 0 and following < len(queue):
                         g = queue[following]
                         following += 1
-                        if _enter(at, slot, g, limit):
+                        if _enter(at, mode, slot, g, limit):
                             _leave(at, slot, g, _OK)
                         else:
-                            write_int(holds, slot, g)
+                            write_int(at.holds, slot, g)
                             busy += 1
-            bad = _prepare(at, start, vectors, slots, holds)
+            bad = _prepare(at, start, vectors, slots)
             busy -= bad
             refill, changed = bad > 0, False
         if busy == 0:
@@ -405,6 +497,8 @@ def integrate(
             _share(at, slots, _ERROR, _STIFFNESS)
         for v in range(vectors):
             bits = invoke(commit, at.blocks + 64 * v, at.n)
+            if mode == SETTLE and bits:
+                _polish(at, lanes.steps[_NEWTON], bits)
             w = -1
             while bits:
                 w += 1
@@ -414,14 +508,16 @@ def integrate(
                 slot = lane // group
                 if not flagged or lane != slot * group:
                     continue
-                g = read_int(holds, slot)
-                if _control(at, lane, _TIME) == _control(at, lane, _STOP):
+                g = read_int(at.holds, slot)
+                if mode == SETTLE and read_int(at.status, g) == _OK:
+                    verdict = _OK
+                elif _control(at, lane, _TIME) == _control(at, lane, _STOP):
                     if not _arrive(at, slot, g):
                         changed |= _control(at, lane, _FRESH) > 0.0
                         continue
                     verdict = _OK
                 else:
-                    verdict = _verdict(at, implicit, slot, g, most)
+                    verdict = _verdict(at, mode, slot, g, most)
                     if verdict == RUNNING:
                         continue
                     if verdict == _HAND_OVER:
@@ -429,6 +525,6 @@ def integrate(
                         handed_over[left] = g
                         left += 1
                 _leave(at, slot, g, verdict)
-                write_int(holds, slot, -1)
+                write_int(at.holds, slot, -1)
                 busy -= 1
                 refill = True

@@ -27,6 +27,8 @@ class Lanes(NamedTuple):
         Group in each slot, -1 where there is none.
     functions, steps : int64 arrays
         Addresses of the system's functions and of the step functions.
+    newton_y, newton_start, newton_control, newton_blocks : arrays
+        Memory of one more vector, for Newton's method on the first one's parameters.
     rest : tuple of arrays
         Memory that only the emitted functions use.
     """
@@ -40,6 +42,10 @@ class Lanes(NamedTuple):
     holds: Integers
     steps: Integers
     functions: Integers
+    newton_y: Array
+    newton_start: Array
+    newton_control: Array
+    newton_blocks: Integers
     rest: tuple[Array, Array]
 
 
@@ -88,15 +94,34 @@ def new_lanes(
     y, new, q, c, control = (
         _aligned(vectors, size, width) for size in (2 * n, 2 * n, p, prepared, len(Control))
     )
+    newton_y, newton_start, newton_control = (
+        _aligned(size, width) for size in (n, n, len(Control))
+    )
     tolerance = np.zeros(len(Setting) + n)
     shared = _aligned(scratch, width)
-    blocks = np.empty((vectors, 8), dtype=np.int64)
-    for v in range(vectors):
-        own = (block[v].ctypes.data for block in (y, new, q, c, control))
-        common = (block.ctypes.data for block in (tolerance, shared, functions))
-        blocks[v] = (*own, *common)
-    holds = np.empty(vectors * width, dtype=np.int64)
-    return Lanes(y, new, q, control, tolerance, blocks, holds, steps, functions, (c, shared))
+    common = [block.ctypes.data for block in (tolerance, shared, functions)]
+
+    def blocks_of(*own: Array) -> list[int]:
+        return [*(block.ctypes.data for block in own), *common]
+
+    blocks = [blocks_of(y[v], new[v], q[v], c[v], control[v]) for v in range(vectors)]
+    newton_blocks = blocks_of(newton_y, newton_start, q[0], c[0], newton_control)
+    return Lanes(
+        y=y,
+        new=new,
+        q=q,
+        control=control,
+        tolerance=tolerance,
+        blocks=np.array(blocks, dtype=np.int64),
+        holds=np.empty(vectors * width, dtype=np.int64),
+        steps=steps,
+        functions=functions,
+        newton_y=newton_y,
+        newton_start=newton_start,
+        newton_control=newton_control,
+        newton_blocks=np.array(newton_blocks, dtype=np.int64),
+        rest=(c, shared),
+    )
 
 
 def _aligned(*shape: int) -> Array:

@@ -1,86 +1,90 @@
 """Raw memory for the driver: numbers behind an address, and calls of emitted functions.
 
-The driver runs millions of short visits to a handful of arrays. As arrays, every visit would pay
+The driver makes millions of short visits to a handful of arrays. As arrays, every visit would pay
 for reference counts and shapes; as addresses it costs a load. Whoever calls the driver keeps the
 arrays alive.
 """
 
 from __future__ import annotations
 
-from typing import Any
+from collections.abc import Callable
+from typing import Any, TypeVar
 
-from numba import types
+from llvmlite import ir
+from numba import njit, types
 from numba.extending import intrinsic
 
+_Function = TypeVar("_Function", bound=Callable[..., Any])
+_DOUBLE, _WORD = ir.DoubleType(), ir.IntType(64)
+_BLOCKS = 8
 
-def _pointer(builder: Any, address: Any, index: Any, kind: Any) -> Any:
+
+def compiled(function: _Function) -> _Function:
+    """Compile ``function`` as a part of an entry point."""
+    result: _Function = njit(error_model="numpy")(function)
+    return result
+
+
+def entry_point(function: _Function) -> _Function:
+    """Compile ``function``, keep the result on disk, and let other threads run meanwhile.
+
+    The copy on disk is renewed when the entry point's own file changes, not when others do.
+    """
+    result: _Function = njit(cache=True, nogil=True, error_model="numpy")(function)
+    return result
+
+
+def _place(builder: Any, address: Any, index: Any, kind: ir.Type) -> Any:
     return builder.gep(builder.inttoptr(address, kind.as_pointer()), [index])
 
 
-@intrinsic
-def read(typing: Any, address: Any, index: Any) -> Any:  # noqa: ARG001
-    """Return the ``index``-th double behind ``address``."""
+def _read(kind: ir.Type, numba_type: Any) -> Any:
+    def read(typing: Any, address: Any, index: Any) -> Any:  # noqa: ARG001
+        def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
+            address, index = arguments
+            return builder.load(_place(builder, address, index, kind))
 
-    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
-        kind = context.get_value_type(types.float64)
-        return builder.load(_pointer(builder, *arguments, kind))
+        return numba_type(types.int64, types.int64), generate
 
-    return types.float64(types.int64, types.int64), generate
-
-
-@intrinsic
-def write(typing: Any, address: Any, index: Any, value: Any) -> Any:  # noqa: ARG001
-    """Store the double ``value`` as the ``index``-th behind ``address``."""
-
-    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
-        address, index, value = arguments
-        builder.store(value, _pointer(builder, address, index, value.type))
-        return context.get_dummy_value()
-
-    return types.void(types.int64, types.int64, types.float64), generate
+    return intrinsic(read)
 
 
-@intrinsic
-def read_int(typing: Any, address: Any, index: Any) -> Any:  # noqa: ARG001
-    """Return the ``index``-th int64 behind ``address``."""
+def _write(kind: ir.Type, numba_type: Any) -> Any:
+    def write(typing: Any, address: Any, index: Any, value: Any) -> Any:  # noqa: ARG001
+        def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
+            address, index, value = arguments
+            builder.store(value, _place(builder, address, index, kind))
+            return context.get_dummy_value()
 
-    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
-        kind = context.get_value_type(types.int64)
-        return builder.load(_pointer(builder, *arguments, kind))
+        return types.void(types.int64, types.int64, numba_type), generate
 
-    return types.int64(types.int64, types.int64), generate
-
-
-@intrinsic
-def write_int(typing: Any, address: Any, index: Any, value: Any) -> Any:  # noqa: ARG001
-    """Store the int64 ``value`` as the ``index``-th behind ``address``."""
-
-    def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
-        address, index, value = arguments
-        builder.store(value, _pointer(builder, address, index, value.type))
-        return context.get_dummy_value()
-
-    return types.void(types.int64, types.int64, types.int64), generate
+    return intrinsic(write)
 
 
-@intrinsic
-def invoke(typing: Any, function: Any, blocks: Any, n: Any) -> Any:  # noqa: ARG001
-    """Call the emitted function at an address.
-
-    ``blocks`` is the address of the addresses it takes (eight words, see
-    :mod:`ruleout.kernel.steps`), ``n`` the number of states.
-    """
-
+def _invoke(typing: Any, function: Any, blocks: Any, n: Any) -> Any:  # noqa: ARG001
     def generate(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:  # noqa: ARG001
         address, table, states = arguments
-        word = context.get_value_type(types.int64)
         words = [
-            builder.load(_pointer(builder, table, context.get_constant(types.int64, i), word))
-            for i in range(8)
+            builder.load(_place(builder, table, ir.Constant(_WORD, i), _WORD))
+            for i in range(_BLOCKS)
         ]
-        from llvmlite import ir
-
-        kind = ir.FunctionType(word, [word] * 9)
+        kind = ir.FunctionType(_WORD, [_WORD] * (_BLOCKS + 1))
         return builder.call(builder.inttoptr(address, kind.as_pointer()), [*words, states])
 
     return types.int64(types.int64, types.int64, types.int64), generate
+
+
+read: Callable[[int, int], float] = _read(_DOUBLE, types.float64)
+"""``read(address, i)``: the i-th double behind ``address``."""
+write: Callable[[int, int, float], None] = _write(_DOUBLE, types.float64)
+"""``write(address, i, value)``: store a double there."""
+read_int: Callable[[int, int], int] = _read(_WORD, types.int64)
+"""``read_int(address, i)``: the i-th int64 behind ``address``."""
+write_int: Callable[[int, int, int], None] = _write(_WORD, types.int64)
+"""``write_int(address, i, value)``: store an int64 there."""
+invoke: Callable[[int, int, int], int] = intrinsic(_invoke)
+"""``invoke(function, blocks, n)``: call the emitted function at an address.
+
+``blocks`` is the address of the addresses it takes, ``n`` the number of states; see
+:mod:`ruleout.kernel.steps`.
+"""

@@ -157,7 +157,8 @@ class ReferenceBackend:
                 done[at[good]] = True
             h = h * _growth(size)
             lost = (h < _SMALLEST_STEP) | ~(largest < 1e200)
-            status[live[lost]] = Status.BLOW_UP
+            grown = largest > 1e8 * (1.0 + np.abs(y0[live]).max(axis=1, initial=0.0))
+            status[live[lost & grown]] = Status.BLOW_UP
             done |= lost
             live, y, q, h, largest = live[~done], y[~done], q[~done], h[~done], largest[~done]
         return result, status
