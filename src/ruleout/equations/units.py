@@ -104,6 +104,8 @@ class Scaling:
 
     def leaves_open(self, name: str, extra: Sequence[Form] = ()) -> bool:
         """Return whether some rescaling that meets every demand changes ``name``."""
+        if name in self.absolute:
+            return False
         rows = [*self.rows, *extra]
         names = {n: i for i, n in enumerate(dict.fromkeys((name, *(n for r in rows for n in r))))}
         matrix = np.zeros((len(rows) + 1, len(names)))
