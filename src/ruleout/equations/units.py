@@ -156,10 +156,10 @@ def _add_priors(system: Scaling, model: Model, priors: Mapping[str, Prior]) -> N
             system.demand({base: 1.0})
 
 
-def _candidates(node: str, variant_set: VariantSet, experiments: Experiments) -> list[str]:
-    """Return the gain parameters of a node that may fix its unit, the best one first.
+def _yardsticks(node: str, variant_set: VariantSet, experiments: Experiments) -> list[str]:
+    """Return the gain parameters of a node that may fix its unit, basal gain last.
 
-    The strength of an uncontested edge goes before the basal gain, which may well be nothing.
+    They are uncontested, without a prior in the file, and the same in every condition.
     """
     mechanism = variant_set.mechanism
     contested = {contest.name for contest in variant_set.contests}
@@ -214,11 +214,15 @@ def unit_ties(
         have = [i for i, m in enumerate(models) if node in m.states]
         return have, [i for i in have if systems[i].leaves_open(node)]
 
-    def tie(node: str) -> bool:
+    yardsticks = {node: _yardsticks(node, variant_set, experiments) for node in expressed}
+
+    def tie(node: str, basal: bool) -> bool:
         have, free = open_in(node)
         if not have or free != have:
             return False
-        for name in _candidates(node, variant_set, experiments):
+        for name in yardsticks[node]:
+            if name.endswith(".basal") != basal:
+                continue
             everywhere = all(name in models[i].parameters for i in have)
             if everywhere and not any(systems[i].leaves_open(node, [{name: 1.0}]) for i in have):
                 for i in have:
@@ -231,8 +235,9 @@ def unit_ties(
                 return True
         return False
 
-    # A tie may hang on a source's unit, so nodes are gone through until nothing changes.
-    while any(tie(node) for node in expressed):
+    # A strength may hang on the unit of its source, so nodes are gone through until nothing
+    # changes. A basal gain, which may well be nothing in truth, is the last resort.
+    while any(tie(node, basal) for basal in (False, True) for node in expressed):
         pass
     for node in expressed:
         have, free = open_in(node)
