@@ -66,7 +66,7 @@ class CompiledBackend:
         from ruleout.kernel.driver import EXPLICIT, IMPLICIT, RUNNING, integrate
 
         size = len(y0)
-        leads = which[::group]
+        leads = np.ascontiguousarray(which[::group])
         plan = schedule.plan
         begin = plan.segment_at[leads]
         rows = Rows(

@@ -474,6 +474,7 @@ def integrate(
     lanes.holds[:] = -1
     following, left, busy = 0, 0, 0
     refill, changed = True, False
+    flagged_lanes = np.zeros(vectors, dtype=np.int64)
     while True:
         while refill or changed:
             if refill:
@@ -495,8 +496,11 @@ def integrate(
             invoke(attempt, at.blocks + 64 * v, at.n)
         if group > 1:
             _share(at, slots, _ERROR, _STIFFNESS)
+        # A group may reach into the next vector, so all of them step before any is looked at.
         for v in range(vectors):
-            bits = invoke(commit, at.blocks + 64 * v, at.n)
+            flagged_lanes[v] = invoke(commit, at.blocks + 64 * v, at.n)
+        for v in range(vectors):
+            bits = flagged_lanes[v]
             if mode == SETTLE and bits:
                 _polish(at, lanes.steps[_NEWTON], bits)
             w = -1
