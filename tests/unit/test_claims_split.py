@@ -70,8 +70,8 @@ def test_signs_in_dispute_are_claims_and_so_are_the_loops_they_make(case_of):
     found = split(case_of(text))
     assert set(found) == {"brake=inhibits", "brake=stimulates"}
     assert found["brake=inhibits"].holds_in == {"v1"}
-    assert found["brake=inhibits"].also == ("loop:x>z",)
-    assert found["brake=stimulates"].also == ("loop:x>z[xz+brake:positive]",)
+    assert found["brake=inhibits"].also == ("loop:x>z[negative:xz+brake]",)
+    assert found["brake=stimulates"].also == ("loop:x>z[positive:xz+brake]",)
 
 
 def test_laws_and_rates_in_dispute_are_claims(case_of):

@@ -118,6 +118,7 @@ def test_a_reversible_conversion_or_a_binding_is_no_loop_by_itself(case_of):
 
 
 def test_a_conversion_cycle_is_positive_and_product_inhibition_negative(case_of):
+    """That b slows the use of a, from which it is made, is the same process and no second loop."""
     text = (
         MATERIAL
         + material("ab", 'from = "a"\nto = "b"\neffect = "converts"')
@@ -127,7 +128,6 @@ def test_a_conversion_cycle_is_positive_and_product_inhibition_negative(case_of)
     found = [loop for loop in only(case_of(text, READ_A)).loops if loop.kind == "feedback"]
     assert {(loop.edges, loop.sign) for loop in found} == {
         (("ab", "ba"), 1),  # a -> b -> a
-        (("ab", "brake"), 1),  # a makes b, and b keeps a from being used up
         (("brake",), -1),  # b slows its own making
     }
 
@@ -154,6 +154,19 @@ def test_feed_forward_pairs_are_coherent_or_not(case_of):
     assert loops(case_of(text), "feed-forward") == [(("x", "z"), -1)]
     text = text.replace('effect = "inhibits"', 'effect = "stimulates"')
     assert loops(case_of(text), "feed-forward") == [(("x", "z"), 1)]
+
+
+def test_an_edge_onto_the_direct_path_makes_a_feed_forward(case_of):
+    text = NODES + edge("xy", "x", "y") + edge("xz", "x", "z")
+    text += edge("brake", "z", "", "inhibits", 'onto = "xy"')
+    assert loops(case_of(text), "feed-forward") == [(("x", "y"), -1)]
+
+
+def test_a_modifier_and_the_reaction_it_modifies_are_no_two_routes(case_of):
+    text = MATERIAL + '[node.u]\nkind = "input"\n'
+    text += material("ab", 'from = "a"\nto = "b"\neffect = "converts"')
+    text += material("speed", 'from = "u"\nonto = "ab"\neffect = "stimulates"')
+    assert loops(case_of(text, READ_A), "feed-forward") == []
 
 
 def test_parallel_edges_are_no_feed_forward(case_of):

@@ -289,8 +289,8 @@ class Assembly:
                 continue
             gain, loss = self.balance(node)
             change = gain - loss
-            for amount, flux in self.flows(name):
-                change = change + flux * amount if amount > 0 else change - flux * -amount
+            for amount, flux in sorted(self.flows(name), key=lambda flow: flow[0] < 0.0):
+                change = change + flux * amount if amount > 0.0 else change - flux * -amount
             if name in self.bend.switched_nodes:
                 change = sym(f"on:{name}") * change
             rhs[name] = change

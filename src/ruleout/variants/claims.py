@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
@@ -92,16 +93,15 @@ def _loop_claims(variants: Sequence[Variant]) -> list[_Draft]:
         for loop in variant.loops:
             if loop.kind == "feedback":
                 closed.setdefault(loop, []).append(variant)
+    alike = Counter(loop.nodes for loop in closed)
     drafts: list[_Draft] = []
-    names: set[str] = set()
     for loop, having in closed.items():
         if len(having) == len(variants):
             continue
         word = {1: "positive", -1: "negative", 0: "sign-changing"}[loop.sign]
         name = "loop:" + ">".join(loop.nodes)
-        if name in names:
-            name += f"[{'+'.join(loop.edges)}:{word}]"
-        names.add(name)
+        if alike[loop.nodes] > 1:
+            name += f"[{word}:{'+'.join(loop.edges)}]"
         text = f"the {word} feedback loop {say_feedback(loop, having[0].wiring.edges)} is closed"
         drafts.append(_Draft(name, text, frozenset(v.name for v in having), 2))
     return drafts

@@ -20,13 +20,15 @@ PROBES = 64
 class Arc:
     """``source`` changes the rate of change of ``target`` by way of ``edge``.
 
-    ``sign`` is +1 or -1, or 0 where the direction depends on the levels.
+    ``sign`` is +1 or -1, or 0 where the direction depends on the levels. ``process`` is the edge
+    whose rate is at work: ``edge`` itself, or the one it finally acts onto.
     """
 
     edge: str
     source: str
     target: str
     sign: int
+    process: str
 
 
 def net_amounts(edge: Edge) -> dict[str, float]:
@@ -98,10 +100,13 @@ def arcs(wiring: Wiring) -> tuple[Arc, ...]:
     """
     found: list[Arc] = []
     for edge in wiring.edges.values():
+        process = edge.name
+        while (onto := onto_edge(wiring.edges[process])) is not None:
+            process = onto
         for target, push in pushes(edge, wiring).items():
             for source, drive in drivers(edge, wiring).items():
                 sign = push * drive
                 if edge.material and source == target and sign < 0:
                     continue
-                found.append(Arc(edge.name, source, target, sign))
+                found.append(Arc(edge.name, source, target, sign, process))
     return tuple(found)

@@ -36,7 +36,7 @@ def _parallel(arcs: Sequence[Arc]) -> dict[tuple[str, str], list[Arc]]:
 
 
 def _cycles(between: dict[tuple[str, str], list[Arc]]) -> Iterator[tuple[Arc, ...]]:
-    """Yield feedback loops; one edge never carries two steps of a loop.
+    """Yield feedback loops; one process never carries two steps of a loop.
 
     (A reversible conversion or the two partners of a binding would close a loop by themselves.)
     """
@@ -51,7 +51,7 @@ def _cycles(between: dict[tuple[str, str], list[Arc]]) -> Iterator[tuple[Arc, ..
         nodes = [names[i] for i in (*cycle[first:], *cycle[:first])]
         steps = [between[pair] for pair in zip(nodes, (*nodes[1:], nodes[0]), strict=True)]
         for path in product(*steps):
-            if len(set(_edges(path))) == len(path):
+            if len({arc.process for arc in path}) == len(path):
                 yield path
 
 
@@ -68,7 +68,7 @@ def _paths(
             visited = {start, *(arc.target for arc in path)}
             here = path[-1].target if path else start
             for arc in leaving.get(here, ()):
-                if arc.target in visited or arc.edge in _edges(path):
+                if arc.target in visited or any(arc.process == a.process for a in path):
                     continue
                 if count == budget:
                     return ending
