@@ -365,14 +365,32 @@ def _set_newton_control(at: _Places, lane: int, entry: int, value: float) -> Non
 
 
 @compiled
-def _share(at: _Places, slots: int, first: int, last: int) -> None:
-    """Let every lane of a group have what its leader found, for control entries first..last."""
+def _share_step(at: _Places, slots: int) -> None:
+    """Let every lane of a group take the step that its leader found."""
     for slot in range(slots):
         lead = slot * at.group
-        for entry in range(first, last + 1):
-            value = _control(at, lead, entry)
+        step = _control(at, lead, _STEP)
+        for lane in range(lead + 1, lead + at.group):
+            _set_control(at, lane, _STEP, step)
+
+
+@compiled
+def _share_worst(at: _Places, slots: int) -> None:
+    """Let every lane of a group have its largest error, and its stiffness where any lane has it.
+
+    The leader's alone would not do: at a fixed point it has no error, and explicit steps grow until
+    the deviation of the other lanes explodes. A lane that is NaN counts only if it leads.
+    """
+    for slot in range(slots):
+        lead = slot * at.group
+        for entry in range(_ERROR, _STIFFNESS + 1):
+            worst = _control(at, lead, entry)
             for lane in range(lead + 1, lead + at.group):
-                _set_control(at, lane, entry, value)
+                other = _control(at, lane, entry)
+                if other > worst:
+                    worst = other
+            for lane in range(lead, lead + at.group):
+                _set_control(at, lane, entry, worst)
 
 
 @compiled
@@ -381,7 +399,7 @@ def _prepare(at: _Places, start: int, vectors: int, slots: int) -> int:
     for v in range(vectors):
         invoke(start, at.blocks + 64 * v, at.n)
     if at.group > 1:
-        _share(at, slots, _STEP, _STEP)
+        _share_step(at, slots)
     bad = 0
     for slot in range(slots):
         g = read_int(at.holds, slot)
@@ -495,7 +513,7 @@ def integrate(
         for v in range(vectors):
             invoke(attempt, at.blocks + 64 * v, at.n)
         if group > 1:
-            _share(at, slots, _ERROR, _STIFFNESS)
+            _share_worst(at, slots)
         # A group may reach into the next vector, so all of them step before any is looked at.
         for v in range(vectors):
             flagged_lanes[v] = invoke(commit, at.blocks + 64 * v, at.n)
