@@ -165,7 +165,8 @@ def save_judgement(judgement: Judgement, case: Case, folder: Path) -> None:
     }
     text = json.dumps(document, indent=1, ensure_ascii=False, allow_nan=False) + "\n"
     write_aside(folder / "verdict.json", lambda path: _write_text(path, text))
-    for name, content in case.files.items():
+    for name in case.hashes:
+        content = (case.folder / name).read_bytes()
         write_aside(folder / "case" / name, lambda path, c=content: _write_bytes(path, c))  # type: ignore[misc]
 
 

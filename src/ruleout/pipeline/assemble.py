@@ -266,7 +266,7 @@ def _meta(case: Case, settings: Settings, results: Results) -> dict[str, Any]:
             "numba": numba.__version__,
             "pandas": pd.__version__,
         },
-        "inputs": dict(case.inputs),
+        "inputs": dict(case.hashes),
         "conditions_of_guarantee": [
             f"The chance that any variant containing the truth is ruled out is kept near or below "
             f"{settings.alpha:g} if: the truth is among these variants and inside their priors, "

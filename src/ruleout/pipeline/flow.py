@@ -124,7 +124,7 @@ class Flow:
         self.progress = progress
         self.bench: Workbench = tasks.bench_of(case)
         self._data = digest(
-            sorted((name, sha) for name, sha in case.inputs.items() if name == "data.csv"),
+            sorted((name, sha) for name, sha in case.hashes.items() if name == "data.csv"),
             case.experiments.readouts,
             case.experiments.conditions,
         )

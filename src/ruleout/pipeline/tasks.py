@@ -71,7 +71,7 @@ _bench: Workbench | None = None
 def bench_of(case: Case) -> Workbench:
     """Return this process's workbench for ``case``, made anew when the case changes."""
     global _bench
-    if _bench is None or _bench.case.inputs != case.inputs:
+    if _bench is None or _bench.case.hashes != case.hashes:
         _bench = Workbench(case)
     return _bench
 

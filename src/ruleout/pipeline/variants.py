@@ -67,7 +67,10 @@ async def judge_variants(flow: Flow) -> Results:
         fit = await fits[name]
         smaller = sorted(variants.contains[name], key=order.index)
         kept_below = await asyncio.gather(*(verdict_ready[s] for s in smaller))
-        shares = await asyncio.gather(*(_share(flow, name, s, await fits[s]) for s in smaller))
+        smaller_fits = await asyncio.gather(*(fits[s] for s in smaller))
+        shares = await asyncio.gather(
+            *(_share(flow, name, s, f) for s, f in zip(smaller, smaller_fits, strict=True))
+        )
         for s, share in zip(smaller, shares, strict=True):
             if share >= REACHABLE_SHARE:
                 confirmed[name].add(s)
