@@ -485,6 +485,13 @@ def test_stages_of_a_source_with_a_given_start_begin_at_it(case_of):
     assert rest == pytest.approx((0.02 + 0.6 * 0.4) / 0.2)
 
 
+def test_stages_rest_even_if_what_they_lead_to_is_held(case_of):
+    text = RELAY.replace('from = "x"\nto = "z"', 'from = "x"\nto = "z"\ndelay = 3.0')
+    setup = one(case_of, "start.z = 2.0", text)
+    rest = rest_of(setup, VALUES)
+    assert [rest[f"xz:{i}"] for i in (1, 2, 3)] == pytest.approx([rest["x"]] * 3)
+
+
 def test_stages_fed_or_read_by_nothing_are_no_states(case_of):
     text = RELAY.replace('from = "x"\nto = "z"', 'from = "x"\nto = "z"\ndelay = 3.0')
     for condition in ('remove = ["x"]', 'remove = ["z"]', 'cut = ["xz"]', "clamp.z = 0.5"):
@@ -528,7 +535,7 @@ def test_time_in_a_rate_is_zero_at_rest(case_of):
     assert rest["z"] == pytest.approx(expected)
 
 
-@pytest.mark.parametrize("times", [[-1.0, 0.0], [0.0, 0.0, 1.0], [[0.0]]])
+@pytest.mark.parametrize("times", [[-1.0, 0.0], [0.0, 0.0, 1.0], [inf, 1.0], [[0.0]]])
 def test_bad_output_times_are_refused(case_of, times):
     with pytest.raises(ValueError, match="must increase from 0"):
         one(case_of, "input.u = 1.0", times=times)

@@ -76,6 +76,14 @@ def test_one_condition_is_enough(case_of):
     assert out(case) == ()
 
 
+def test_a_condition_held_out_does_not_count(case_of):
+    more = "[condition.d]\ninput.v = 1.0\nhold_out = true\n"
+    assert out(case_of(MECHANISM, f"{READOUT}[condition.c]\ninput.u = 1.0\n{more}")) == (
+        "e",
+        "onto",
+    )
+
+
 def test_only_measured_pairs_count(case_of):
     """The condition that would show the edges is planned in the file but was not measured."""
     case = case_of(

@@ -278,10 +278,10 @@ class Assembly:
             chain[f"{edge.name}:{i}"] = rate * (before - here)
         return chain
 
-    def equations(self) -> dict[str, Expr]:
+    def equations(self, wanted: Collection[str] = ()) -> dict[str, Expr]:
         """Return the rate of change of every state: nodes in file order, then delay stages.
 
-        A delay that leads nowhere (its target is gone) has no stages.
+        A delay that leads nowhere (its target is gone) has no stages unless they are ``wanted``.
         """
         rhs: dict[str, Expr] = {}
         for name, node in self.wiring.nodes.items():
@@ -296,7 +296,7 @@ class Assembly:
             rhs[name] = change
         chains = {f"{e.name}:{e.stages}": self.stages(e) for e in self.edges.values()}
         used: set[str] = set()
-        while found := (symbols(*rhs.values()) & chains.keys()) - used:
+        while found := (symbols(*rhs.values()).union(wanted) & chains.keys()) - used:
             used |= found
             for last, chain in chains.items():
                 if last in found:

@@ -55,16 +55,18 @@ def assumptions(wiring: Wiring) -> tuple[str, ...]:
     linear = [e for e in regulating if e.laws[0] == "linear" and not divides(e, e.effects[0])]
     if linear:
         said.append(f"Far from saturation, in proportion to the source: {_name(linear)}.")
-    enzymes = [
-        e
-        for e in edges
-        if e.laws[0] == "saturating" and not e.rates and not divides(e, e.effects[0])
-    ]
-    enzymes += [e for e in regulating if e.acts_on == "saturating" and e not in enzymes]
+    enzymes = [e for e in material if e.laws[0] == "saturating" and not e.rates]
+    enzymes += [e for e in regulating if e.acts_on == "saturating"]
     if enzymes:
         said.append(
             "Michaelis-Menten: the enzyme is scarce next to its substrate and binds it fast: "
             f"{_name(enzymes)}."
+        )
+    binding = [e for e in regulating if e.laws[0] == "saturating" and not divides(e, e.effects[0])]
+    if binding:
+        said.append(
+            f"Saturating: the source binds fast and reversibly, and is not used up by it: "
+            f"{_name(binding)}."
         )
     hill = [e for e in edges if e.laws[0] == "hill" and not e.rates]
     if hill:

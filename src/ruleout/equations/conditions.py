@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Collection, Hashable, Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,7 +10,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from ruleout.equations.assembly import Assembly, Bend
 from ruleout.equations.courses import factor_at, level_at, piece_at
-from ruleout.equations.starts import node_start, owned, resting_level, state_start
+from ruleout.equations.starts import owned, resting_level, state_start
 from ruleout.equations.types import Model, Setup, Start, Structure
 from ruleout.experiments.types import ALWAYS, Condition, Experiments
 from ruleout.expressions import ZERO, Expr, substitute, sym, symbols
@@ -54,74 +54,91 @@ def structure(model: Model, condition: Condition) -> Structure:
     )
 
 
-def _input_level(name: str, sloped: Iterable[str]) -> Expr:
-    level: Expr = sym(f"input:{name}")
-    return level + sym(f"slope:{name}") * sym("time") if name in sloped else level
+class _Systems:
+    """The systems of one model, each put together once for all conditions alike in shape."""
+
+    def __init__(self, model: Model) -> None:
+        self.model = model
+        self.wiring = model.variant.wiring
+        self.inputs = [name for name, node in self.wiring.nodes.items() if node.kind == "input"]
+        self._made: dict[Hashable, dict[str, Expr]] = {}
+
+    def _assembled(self, bend: Bend, wanted: Collection[str] = ()) -> dict[str, Expr]:
+        return Assembly(self.wiring, without_basal(self.model), bend).equations(wanted)
+
+    def _system(self, equations: Mapping[str, Expr], condition: Condition) -> System:
+        """Return a system whose parameters are those that occur, specials last."""
+        parameters = self.model.parameters
+        free = {p: sym(f"{p}@{condition.name}") for p in condition.free if p in parameters}
+        rhs = substitute(equations.values(), free) if free else tuple(equations.values())
+        found = symbols(*rhs) - equations.keys() - {"time"}
+        ordinary = [free[p].name if p in free else p for p in parameters]
+        special = sorted(name for name in found if ":" in name)
+        return System(
+            states=tuple(equations),
+            parameters=(*(p for p in ordinary if p in found), *special),
+            rhs=rhs,
+        )
+
+    def main(self, condition: Condition) -> System:
+        """Return the equations from time 0 on."""
+        shape = structure(self.model, condition)
+        if shape not in self._made:
+            levels: dict[str, Expr] = {name: sym(f"input:{name}") for name in self.inputs}
+            for name in shape.sloped:
+                levels[name] = levels[name] + sym(f"slope:{name}") * sym("time")
+            levels.update({name: sym(f"clamp:{name}") for name in shape.clamped})
+            levels.update(dict.fromkeys(shape.removed, ZERO))
+            bend = Bend(levels, shape.cut, shape.switched_nodes, shape.switched_edges)
+            self._made[shape] = self._assembled(bend)
+        return self._system(self._made[shape], condition)
+
+    def rest(self, condition: Condition, states: Mapping[str, Start]) -> System | None:
+        """Return the equations under which the states that start at rest settle.
+
+        Only what those states depend on is kept. Anything with a given start is held there: as the
+        parameter ``start:STATE`` if it is a state of the main system, else by its value.
+        """
+        wanted = [name for name, start in states.items() if start.rest]
+        if not wanted:
+            return None
+        levels: dict[str, Expr] = {name: sym(f"input:{name}") for name in self.inputs}
+        for name, node in self.wiring.nodes.items():
+            if condition.remove.get(name) == ALWAYS and node.kind != "input":
+                levels[name] = ZERO
+            elif node.kind != "input":
+                levels |= self._held(name, condition, states)
+        cut = frozenset(name for name, time in condition.cut.items() if time == ALWAYS)
+        key = (tuple(levels.items()), cut, tuple(states.items()))
+        if key not in self._made:
+            equations = self._assembled(Bend(levels, cut), wanted)
+            held: dict[str, Expr] = {"time": ZERO}
+            for name in [name for name in equations if ":" in name]:
+                held |= self._held(name, condition, states)
+            settling = {name: rhs for name, rhs in equations.items() if name not in held}
+            rhs = substitute(settling.values(), held)
+            self._made[key] = _needed(dict(zip(settling, rhs, strict=True)), wanted)
+        return self._system(self._made[key], condition)
+
+    def _held(
+        self, name: str, condition: Condition, states: Mapping[str, Start]
+    ) -> dict[str, Expr]:
+        """Return what stands for a state at rest if it has a given start."""
+        start = state_start(name, self.wiring, condition)
+        if start.value is None:
+            return {}
+        return {name: sym(f"start:{name}") if name in states else start.value}
 
 
-def _system(model: Model, equations: Mapping[str, Expr], condition: Condition) -> System:
-    """Return a system whose parameters are those that occur, specials last."""
-    free = {p: sym(f"{p}@{condition.name}") for p in condition.free if p in model.parameters}
-    rhs = substitute(equations.values(), free)
-    found = symbols(*rhs) - equations.keys() - {"time"}
-    ordinary = [free[p].name if p in free else p for p in model.parameters]
-    special = sorted(name for name in found if ":" in name)
-    return System(
-        states=tuple(equations),
-        parameters=(*(p for p in ordinary if p in found), *special),
-        rhs=rhs,
-    )
-
-
-def _main_system(model: Model, shape: Structure, condition: Condition) -> System:
-    nodes = model.variant.wiring.nodes
-    levels = {
-        name: _input_level(name, shape.sloped)
-        for name, node in nodes.items()
-        if node.kind == "input"
-    }
-    levels.update({name: sym(f"clamp:{name}") for name in shape.clamped})
-    levels.update(dict.fromkeys(shape.removed, ZERO))
-    bend = Bend(levels, shape.cut, shape.switched_nodes, shape.switched_edges)
-    equations = Assembly(model.variant.wiring, without_basal(model), bend).equations()
-    return _system(model, equations, condition)
-
-
-def _rest_system(model: Model, condition: Condition, states: Mapping[str, Start]) -> System | None:
-    """Return the equations under which the states that start at rest settle.
-
-    Only what those states depend on is kept. Anything with a given start is held there: as the
-    parameter ``start:STATE`` if it is a state of the main system, else by its value.
-    """
-    wanted = [name for name, start in states.items() if start.rest]
-    if not wanted:
-        return None
-    wiring = model.variant.wiring
-    levels: dict[str, Expr] = {}
-    for name, node in wiring.nodes.items():
-        start = node_start(node, condition)
-        if node.kind == "input":
-            levels[name] = sym(f"input:{name}")
-        elif condition.remove.get(name) == ALWAYS:
-            levels[name] = ZERO
-        elif start.value is not None:
-            levels[name] = sym(f"start:{name}") if name in states else start.value
-    cut = {name for name, time in condition.cut.items() if time == ALWAYS}
-    equations = Assembly(wiring, without_basal(model), Bend(levels, cut)).equations()
-    held = {"time": ZERO}
-    for name in [name for name in equations if ":" in name]:
-        start = state_start(name, model.variant.wiring, condition)
-        if start.value is not None:
-            held[name] = sym(f"start:{name}") if name in states else start.value
-            del equations[name]
-    rhs = dict(zip(equations, substitute(equations.values(), held), strict=True))
+def _needed(equations: Mapping[str, Expr], wanted: Iterable[str]) -> dict[str, Expr]:
+    """Return the equations of the states that ``wanted`` ones depend on."""
     needed = set(wanted)
-    todo = list(wanted)
+    todo = list(needed)
     while todo:
-        for name in (symbols(rhs[todo.pop()]) & rhs.keys()) - needed:
+        for name in (symbols(equations[todo.pop()]) & equations.keys()) - needed:
             needed.add(name)
             todo.append(name)
-    return _system(model, {n: e for n, e in rhs.items() if n in needed}, condition)
+    return {name: rhs for name, rhs in equations.items() if name in needed}
 
 
 @dataclass(frozen=True, slots=True)
@@ -204,12 +221,12 @@ def _protocol(system: System, course: _Course, times: Array) -> Protocol:
     )
 
 
-def _setup(model: Model, condition: Condition, read: Iterable[str], times: Array) -> Setup:
-    course = _Course(model, condition)
-    system = _main_system(model, structure(model, condition), condition)
-    states = {name: state_start(name, model.variant.wiring, condition) for name in system.states}
-    rest = _rest_system(model, condition, states)
-    nodes = model.variant.wiring.nodes
+def _setup(systems: _Systems, condition: Condition, read: Iterable[str], times: Array) -> Setup:
+    course = _Course(systems.model, condition)
+    system = systems.main(condition)
+    states = {name: state_start(name, systems.wiring, condition) for name in system.states}
+    rest = systems.rest(condition, states)
+    nodes = systems.wiring.nodes
     fixed = [n for n in dict.fromkeys((*nodes, *read)) if n not in states]
     lasting = {
         owned(sym(p), condition).name: factor_at(changes, ALWAYS)
@@ -259,14 +276,11 @@ def setups(
         If output times are not increasing or start before 0.
     """
     read = sorted({name for r in experiments.readouts.values() for name in symbols(r.of)})
+    systems = _Systems(model)
     found = []
     for name, given in times_by_condition.items():
         times = np.array(given, dtype=float)
-        if (
-            times.ndim != 1
-            or (times < 0.0).any()
-            or not (np.diff(times[np.isfinite(times)]) > 0.0).all()
-        ):
+        if times.ndim != 1 or (times < 0.0).any() or (times[1:] <= times[:-1]).any():
             raise ValueError(f"output times of '{name}' must increase from 0 on, got {times}")
-        found.append(_setup(model, experiments.conditions[name], read, times))
+        found.append(_setup(systems, experiments.conditions[name], read, times))
     return found

@@ -101,14 +101,16 @@ def effective(wiring: Wiring, arcs: Sequence[Arc], experiments: Experiments) -> 
     """Return the nodes and edges of a wiring that can influence a measured readout.
 
     An edge can if it is there, with a source that is not zero, in a condition in which a directed
-    path leads from a node it acts on to a node of a readout measured there. Being able to is a
-    matter of the graph: the effect may still be too small to see.
+    path leads from a node it acts on to a node of a readout measured there. Conditions held out
+    do not count: they never enter a verdict. Being able to is a matter of the graph: the effect may
+    still be too small to see.
     """
     goals: dict[str, set[str]] = {}
     for condition, readout in measured_pairs(experiments):
         goals.setdefault(condition, set()).update(symbols(experiments.readouts[readout].of))
     found: set[str] = set()
-    for condition, nodes in goals.items():
-        if condition in experiments.conditions:
-            found |= _effective_in(wiring, arcs, experiments.conditions[condition], nodes)
+    for name, nodes in goals.items():
+        measured = experiments.conditions[name]
+        if not measured.hold_out:
+            found |= _effective_in(wiring, arcs, measured, nodes)
     return frozenset(found)
