@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import Lowered
-from ruleout.kernel.memory import Lanes, Rows, new_lanes
+from ruleout.kernel.memory import Lanes, Rows, addresses
 from ruleout.kernel.reference import Tape
 from ruleout.kernel.schedule import Integers, Plan, Schedule, pack
 from ruleout.kernel.steps import Setting
@@ -22,6 +22,8 @@ from ruleout.kernel.types import Array, Protocol, Status
 Flags = NDArray[np.int8]
 _STIFF_STEPS = 6.0
 _ROWS_PER_TASK = 512
+_PATIENCE = 1000.0
+"""Steps at rtol 1e-6 in which the implicit method must have made progress."""
 
 
 class CompiledBackend:
@@ -66,7 +68,7 @@ class CompiledBackend:
         from ruleout.kernel.driver import EXPLICIT, IMPLICIT, RUNNING, integrate
 
         size = len(y0)
-        leads = np.ascontiguousarray(which[::group])
+        leads = which[::group]
         plan = schedule.plan
         begin = plan.segment_at[leads]
         rows = Rows(
@@ -84,17 +86,20 @@ class CompiledBackend:
             started=np.empty(len(leads)),
         )
         vectors = _vectors(group, self._code.width)
-        most = float(max_steps)
+        most, where = float(max_steps), addresses(*plan)
+        patience = _PATIENCE * max(1.0, (1e-6 / rtol) ** 0.2)
 
         def run(groups: Integers) -> None:
             lanes = self._borrow(vectors)
             lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
             lanes.tolerance[len(Setting) :] = atol
             stiff = np.empty(len(groups), dtype=np.int64)
-            left = integrate(EXPLICIT, groups, group, lanes, plan, rows, most, stiff)
+            directory = lanes.directory(where, rows, group)
+            (at,) = addresses(directory)
+            left = integrate(EXPLICIT, at, groups, most, patience, stiff)
             if left:
                 lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
-                integrate(IMPLICIT, stiff[:left], group, lanes, plan, rows, most, stiff[:0])
+                integrate(IMPLICIT, at, stiff[:left], most, patience, stiff[:0])
             self._give_back(lanes)
 
         _in_parallel(run, np.arange(len(leads)), _ROWS_PER_TASK // group + 1)
@@ -138,6 +143,7 @@ class CompiledBackend:
             mark=np.empty(size),
             started=np.empty(size),
         )
+        where = addresses(*plan)
 
         def run(part: Integers) -> None:
             lanes = self._borrow(1)
@@ -146,7 +152,9 @@ class CompiledBackend:
             lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
             lanes.tolerance[Setting.SETTLE_LIMIT] = 1.0
             lanes.tolerance[Setting.FLOOR_FACTOR] = STEADY_RTOL * STEADY_FLOOR
-            integrate(SETTLE, part, 1, lanes, plan, rows, np.inf, part[:0])
+            directory = lanes.directory(where, rows, 1)
+            (at,) = addresses(directory)
+            integrate(SETTLE, at, part, np.inf, np.inf, part[:0])
             self._give_back(lanes)
 
         _in_parallel(run, np.arange(size), _ROWS_PER_TASK)
@@ -166,17 +174,7 @@ class CompiledBackend:
         try:
             return spare.pop()
         except IndexError:
-            code = self._code
-            return new_lanes(
-                vectors,
-                code.width,
-                self._n,
-                self._p,
-                code.prepared,
-                code.scratch,
-                code.functions,
-                code.steps,
-            )
+            return Lanes(vectors, self._n, self._p, self._code)
 
     def _give_back(self, lanes: Lanes) -> None:
         self._spare[len(lanes.control)].append(lanes)

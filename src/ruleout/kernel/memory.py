@@ -2,55 +2,73 @@
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from enum import IntEnum
+from typing import Any, NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ruleout.kernel.assembly import ALIGNMENT
+from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.schedule import Integers
 from ruleout.kernel.steps import Control, Setting
 from ruleout.kernel.types import Array
 
 
-class Lanes(NamedTuple):
-    """Memory of V vectors of W lanes, and the code that runs in them.
+class Place(IntEnum):
+    """Entries of the directory: where the arrays are, and how large.
 
-    Attributes
-    ----------
-    y, new : (V, 2 N, W) arrays
-    q : (V, P, W) array
-    control : (V, len(Control), W) array
-    tolerance : (len(Setting) + N,) array
-    blocks : (V, 8) int64 array
-        Addresses of the blocks of each vector, in the order of the emitted functions' arguments.
-    holds : (V * W,) int64 array
-        Group in each slot, -1 where there is none.
-    functions, steps : int64 arrays
-        Addresses of the system's functions and of the step functions.
-    newton_y, newton_start, newton_control, newton_blocks : arrays
-        Memory of one more vector, for Newton's method on the first one's parameters.
-    rest : tuple of arrays
-        Memory that only the emitted functions use.
+    N, P, W and V are the numbers of states, parameters, lanes in a vector and vectors; B rows come
+    in groups.
     """
 
-    y: Array
-    new: Array
-    q: Array
-    control: Array
-    tolerance: Array
-    blocks: Integers
-    holds: Integers
-    steps: Integers
-    functions: Integers
-    newton_y: Array
-    newton_start: Array
-    newton_control: Array
-    newton_blocks: Integers
-    rest: tuple[Array, Array]
+    WIDTH = 0
+    VECTORS = 1
+    N = 2
+    P = 3
+    # Lanes: (V, 2 N, W), (V, P, W), (V, len(Control), W) doubles; per vector the addresses that
+    # emitted functions take; the group in each slot; addresses of the step functions.
+    Y = 4
+    Q = 5
+    CONTROL = 6
+    BLOCKS = 7
+    HOLDS = 8
+    STEP_CODE = 9
+    # One more vector, for Newton's method on the first one's parameters.
+    NEWTON_Y = 10
+    NEWTON_START = 11
+    NEWTON_CONTROL = 12
+    NEWTON_BLOCKS = 13
+    # The arrays of a Plan.
+    SEGMENT_AT = 14
+    TIME_AT = 15
+    BREAKS = 16
+    FACTOR = 17
+    SHIFT = 18
+    KEEP = 19
+    ADD = 20
+    TIMES = 21
+    ENDLESS = 22
+    # The arrays of Rows.
+    ROW_Y = 23
+    ROW_P = 24
+    STATES = 25
+    STATUS = 26
+    ROW_STEPS = 27
+    WHICH = 28
+    SEGMENT = 29
+    OUTPUT = 30
+    ROW_TIME = 31
+    ROW_STEP = 32
+    MARK = 33
+    STARTED = 34
+    GROUP = 35
+    RECORDED = 36
+    OUTPUTS = 37
 
 
 class Rows(NamedTuple):
-    """Where every row and every group of rows stands.
+    """Where every row and every group of rows stands; in the order of the directory.
 
     Attributes
     ----------
@@ -80,51 +98,74 @@ class Rows(NamedTuple):
     started: Array
 
 
-def new_lanes(
-    vectors: int,
-    width: int,
-    n: int,
-    p: int,
-    prepared: int,
-    scratch: int,
-    functions: Integers,
-    steps: Integers,
-) -> Lanes:
-    """Return zeroed memory for V = ``vectors`` vectors of ``width`` lanes."""
-    y, new, q, c, control = (
-        _aligned(vectors, size, width) for size in (2 * n, 2 * n, p, prepared, len(Control))
-    )
-    newton_y, newton_start, newton_control = (
-        _aligned(size, width) for size in (n, n, len(Control))
-    )
-    tolerance = np.zeros(len(Setting) + n)
-    shared = _aligned(scratch, width)
-    common = [block.ctypes.data for block in (tolerance, shared, functions)]
+class Lanes:
+    """Memory of V vectors of W lanes.
 
-    def blocks_of(*own: Array) -> list[int]:
-        return [*(block.ctypes.data for block in own), *common]
+    Attributes
+    ----------
+    y, new : (V, 2 N, W) arrays
+        States, then slopes, before and after an attempt.
+    q : (V, P, W) array
+    control : (V, len(Control), W) array
+    tolerance : (len(Setting) + N,) array
+    prepared : (V, C, W) array
+    scratch : (S, W) array
+    blocks : (V, 8) int64 array
+        Per vector, the addresses that emitted functions take.
+    """
 
-    blocks = [blocks_of(y[v], new[v], q[v], c[v], control[v]) for v in range(vectors)]
-    newton_blocks = blocks_of(newton_y, newton_start, q[0], c[0], newton_control)
-    return Lanes(
-        y=y,
-        new=new,
-        q=q,
-        control=control,
-        tolerance=tolerance,
-        blocks=np.array(blocks, dtype=np.int64),
-        holds=np.empty(vectors * width, dtype=np.int64),
-        steps=steps,
-        functions=functions,
-        newton_y=newton_y,
-        newton_start=newton_start,
-        newton_control=newton_control,
-        newton_blocks=np.array(newton_blocks, dtype=np.int64),
-        rest=(c, shared),
-    )
+    def __init__(self, vectors: int, n: int, p: int, code: SystemCode) -> None:
+        width = code.width
+        self.y = aligned_zeros(vectors, 2 * n, width)
+        self.new = aligned_zeros(vectors, 2 * n, width)
+        self.q = aligned_zeros(vectors, p, width)
+        self.control = aligned_zeros(vectors, len(Control), width)
+        self.tolerance = np.zeros(len(Setting) + n)
+        self.prepared = aligned_zeros(vectors, code.prepared, width)
+        self.scratch = aligned_zeros(code.scratch, width)
+        self._holds = np.empty(vectors * width, dtype=np.int64)
+        self._newton = (
+            aligned_zeros(n, width),
+            aligned_zeros(n, width),
+            aligned_zeros(len(Control), width),
+        )
+        self._code = code
+        common = addresses(self.tolerance, self.scratch, code.functions)
+        own = zip(self.y, self.new, self.q, self.prepared, self.control, strict=True)
+        self.blocks = np.array([addresses(*arrays) + common for arrays in own], dtype=np.int64)
+        newton_y, start, control = self._newton
+        shared = addresses(newton_y, start, self.q[0], self.prepared[0], control) + common
+        self._newton_blocks = np.array(shared, dtype=np.int64)
+        self._directory = [
+            width,
+            vectors,
+            n,
+            p,
+            *addresses(self.y, self.q, self.control, self.blocks, self._holds, code.steps),
+            *addresses(*self._newton, self._newton_blocks),
+        ]
+
+    def directory(self, plan_addresses: list[int], rows: Rows, group: int) -> Integers:
+        """Return the directory of these lanes, a plan and rows."""
+        shape = rows.states.shape
+        entries = [
+            *self._directory,
+            *plan_addresses,
+            *addresses(*rows),
+            group,
+            shape[2],
+            shape[1],
+        ]
+        return np.array(entries, dtype=np.int64)
 
 
-def _aligned(*shape: int) -> Array:
+def addresses(*arrays: NDArray[Any]) -> list[int]:
+    """Return where the arrays begin in memory."""
+    return [array.__array_interface__["data"][0] for array in arrays]
+
+
+def aligned_zeros(*shape: int) -> Array:
+    """Return zeros that begin where vectors of any width may begin."""
     size = int(np.prod(shape))
     spare = ALIGNMENT // 8
     block = np.zeros(size + spare)

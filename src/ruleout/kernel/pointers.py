@@ -21,7 +21,9 @@ _BLOCKS = 8
 
 def compiled(function: _Function) -> _Function:
     """Compile ``function`` as a part of an entry point."""
-    result: _Function = njit(error_model="numpy")(function)
+    result: _Function = njit(error_model="numpy", no_cpython_wrapper=True, no_cfunc_wrapper=True)(
+        function
+    )
     return result
 
 
@@ -30,7 +32,9 @@ def entry_point(function: _Function) -> _Function:
 
     The copy on disk is renewed when the entry point's own file changes, not when others do.
     """
-    result: _Function = njit(cache=True, nogil=True, error_model="numpy")(function)
+    result: _Function = njit(cache=True, nogil=True, error_model="numpy", no_cfunc_wrapper=True)(
+        function
+    )
     return result
 
 
@@ -88,3 +92,27 @@ invoke: Callable[[int, int, int], int] = intrinsic(_invoke)
 ``blocks`` is the address of the addresses it takes, ``n`` the number of states; see
 :mod:`ruleout.kernel.steps`.
 """
+
+
+@compiled
+def number(at: int, place: int, i: int) -> float:
+    """Return the i-th double of the array whose address is entry ``place`` of directory ``at``."""
+    return read(read_int(at, place), i)
+
+
+@compiled
+def set_number(at: int, place: int, i: int, value: float) -> None:
+    """Store a double in the array at entry ``place`` of directory ``at``."""
+    write(read_int(at, place), i, value)
+
+
+@compiled
+def whole(at: int, place: int, i: int) -> int:
+    """Return the i-th int64 of the array at entry ``place`` of directory ``at``."""
+    return read_int(read_int(at, place), i)
+
+
+@compiled
+def set_whole(at: int, place: int, i: int, value: int) -> None:
+    """Store an int64 in the array at entry ``place`` of directory ``at``."""
+    write_int(read_int(at, place), i, value)
