@@ -314,6 +314,13 @@ together = ["e0", "last"]
         variants_of(case_of(RELAY + contested(*names, "last") + rules))
 
 
+def test_rules_too_tangled_to_walk_through_are_refused(case_of, monkeypatch):
+    """The walk is bounded, so that no file can make it hang."""
+    monkeypatch.setattr("ruleout.variants.expansion.MAX_STEPS", 50)
+    with pytest.raises(InputError, match="too many variants"):
+        variants_of(case_of(RELAY + contested(*"abcdefgh")))
+
+
 def test_options_read_as_written():
     assert str(Option(False)) == "absent"
     assert str(Option(True)) == "present"
