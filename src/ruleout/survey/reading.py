@@ -1,0 +1,225 @@
+"""A family file -> :class:`Family`, the behaviours to score and how to sample."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import MISSING, dataclass, fields
+from pathlib import Path
+from typing import Any, Final, get_args
+
+from ruleout.files import Section, check_name, describe
+from ruleout.mechanism.types import Fixed, LogUniform
+from ruleout.survey.behaviours import BEHAVIOURS, Behaviour
+from ruleout.survey.types import DEFAULT_RANGES, Family, Method, Range, Style
+
+KEYS: Final = ("title", "family", "node", "edge", "range", "sampling", "behaviour")
+FAMILY_KEYS: Final = (
+    "style", "output", "edges", "self_edges", "signs", "fewest_edges", "most_edges",
+    "must_reach", "connected", "up_to_relabelling", "constant", "start",
+)  # fmt: skip
+NODE_KINDS: Final[Mapping[Style, str]] = {"enzyme": "switched", "gene": "expressed"}
+SIGN: Final[Mapping[str, int]] = {"stimulates": 1, "inhibits": -1, "absent": 0}
+MOST_NODES: Final = 6
+MOST_SETS: Final = 1_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class FamilyFile:
+    """What a family file says.
+
+    Attributes
+    ----------
+    family : Family
+    behaviours : tuple of Behaviour
+        In file order.
+    sets : int
+    method : {"sobol", "latin", "independent"}
+    """
+
+    family: Family
+    behaviours: tuple[Behaviour, ...]
+    sets: int
+    method: Method
+
+
+def read_family(path: Path) -> FamilyFile:
+    """Return the family, behaviours and sampling written in ``path``.
+
+    Raises
+    ------
+    InputError
+        At the first thing that cannot be used, with file, line and field.
+    """
+    top = Section.open(path)
+    top.only(KEYS)
+    table = top.section("family")
+    table.only(FAMILY_KEYS)
+    style: Style = table.word("style", get_args(Style))
+    nodes, source = _read_nodes(top, style)
+    allowed, drives = _read_edges(top, table, nodes, source)
+    output = _node(table, "output", table.text("output"), nodes)
+    start = table.number("start", 0.1, low=0.0)
+    family = Family(
+        title=top.text("title"),
+        style=style,
+        nodes=nodes,
+        output=output,
+        source=source,
+        drives=drives,
+        allowed=allowed,
+        fewest_edges=table.integer("fewest_edges", 0, low=0, high=MOST_NODES**2),
+        most_edges=table.integer("most_edges", MOST_NODES**2, low=0, high=MOST_NODES**2),
+        must_reach=table.flag("must_reach", bool(source)),
+        connected=table.flag("connected"),
+        relabelled=table.flag("up_to_relabelling"),
+        ranges=_read_ranges(top, style),
+        constant=table.number("constant", 0.5, above=0.0),
+        starts=(start,) * len(nodes),
+    )
+    if family.must_reach and not source:
+        table.fail("must_reach", 'there is no input to start from; add a node of kind = "input"')
+    _check_range_names(top, family)
+    sampling = top.section("sampling")
+    sampling.only(("sets", "method"))
+    return FamilyFile(
+        family=family,
+        behaviours=_read_behaviours(top, family),
+        sets=sampling.integer("sets", 1024, low=1, high=MOST_SETS),
+        method=sampling.word("method", get_args(Method), "sobol"),
+    )
+
+
+def _node(table: Section, key: str, name: str, nodes: tuple[str, ...]) -> int:
+    if name not in nodes:
+        table.fail(key, f"'{name}' is no node that moves; give one of {', '.join(nodes)}")
+    return nodes.index(name)
+
+
+def _read_nodes(top: Section, style: Style) -> tuple[tuple[str, ...], str]:
+    nodes: list[str] = []
+    source = ""
+    for name, table in top.sections("node").items():
+        check_name(name, "node", table.where())
+        table.only(("kind",))
+        kind = table.word("kind", (NODE_KINDS[style], "input"))
+        if kind == "input" and source:
+            table.fail("kind", f"'{source}' is an input already; a family has one at most")
+        if kind == "input":
+            source = name
+        else:
+            nodes.append(name)
+    if not 1 <= len(nodes) <= MOST_NODES:
+        top.fail(
+            "node",
+            f"{len(nodes)} nodes of kind {NODE_KINDS[style]} were given; a family has 1 to "
+            f"{MOST_NODES}",
+        )
+    return tuple(nodes), source
+
+
+def _read_edges(
+    top: Section, table: Section, nodes: tuple[str, ...], source: str
+) -> tuple[tuple[tuple[tuple[int, ...], ...], ...], tuple[tuple[int, int], ...]]:
+    words = table.names("signs") or ("stimulates", "inhibits")
+    for word in words:
+        table.one_of("signs", word, ("stimulates", "inhibits"))
+    everywhere = tuple(sorted({0, *(SIGN[w] for w in words)}))
+    every = table.word("edges", ("all", "listed"), "all") == "all"
+    loops = table.flag("self_edges", True)
+    n = len(nodes)
+    allowed = [
+        [everywhere if every and (loops or i != j) else (0,) for j in range(n)] for i in range(n)
+    ]
+    drives: list[tuple[int, int]] = []
+    for edge in top.sections("edge").values():
+        edge.only(("from", "to", "effect", "contested"))
+        target = _node(edge, "to", edge.text("to"), nodes)
+        signs = _read_signs(edge)
+        if source and edge.text("from") == source:
+            if len(signs) > 1 or signs == (0,):
+                edge.fail("contested", "an edge from the input is in every wiring; give 'effect'")
+            drives.append((target, signs[0]))
+        else:
+            allowed[_node(edge, "from", edge.text("from"), nodes)][target] = signs
+    if source and not drives:
+        top.fail("edge", f'nothing leads from the input; write an edge from = "{source}"')
+    return tuple(map(tuple, allowed)), tuple(drives)
+
+
+def _read_signs(edge: Section) -> tuple[int, ...]:
+    if "effect" in edge:
+        return (SIGN[edge.word("effect", ("stimulates", "inhibits"))],)
+    options = edge.names("contested")
+    if not options:
+        edge.fail("contested", "give 'effect', or contested = [...] with the signs it may have")
+    for option in options:
+        edge.one_of("contested", option, tuple(SIGN))
+    return tuple(sorted(SIGN[option] for option in options))
+
+
+def _read_ranges(top: Section, style: Style) -> dict[str, Range]:
+    table = top.section("range")
+    parts = DEFAULT_RANGES[style]
+    found: dict[str, Range] = {}
+    for name, value in top.parameters("range").items():
+        if name.rpartition(".")[2] not in parts:
+            table.fail(name, f"'{name}' has no range here; ranges are for {', '.join(parts)}")
+        if isinstance(value, Mapping):
+            inner = Section(table.path, f"range.{name}", value, table.lines)
+            inner.only(("low", "high"))
+            low = inner.number("low", above=0.0)
+            found[name] = LogUniform(low, inner.number("high", above=low))
+        elif isinstance(value, int | float) and not isinstance(value, bool):
+            found[name] = Fixed(table.as_number(name, value, above=0.0))
+        else:
+            table.fail(name, f"{describe(value)} was given; {{ low, high }} or a number is needed")
+    return found
+
+
+def _check_range_names(top: Section, family: Family) -> None:
+    edges = {
+        family.edge_name(i, j) for i in range(len(family.nodes)) for j in range(len(family.nodes))
+    }
+    owners = {
+        *edges,
+        *(f"{family.source}_on_{family.nodes[j]}" for j, _ in family.drives),
+        *(f"{word}_{node}" for word in ("raise", "lower") for node in family.nodes),
+        *family.nodes,
+    }
+    for name in family.ranges:
+        owner = name.rpartition(".")[0]
+        if owner and owner not in owners:
+            top.section("range").fail(
+                name, f"'{owner}' is no edge or node; edges are called SOURCE_on_TARGET"
+            )
+
+
+def _read_behaviours(top: Section, family: Family) -> tuple[Behaviour, ...]:
+    tables = top.sections("behaviour")
+    if not tables:
+        top.fail(
+            "behaviour",
+            f"no behaviour is given; write [behaviour.NAME] with one of {', '.join(BEHAVIOURS)}",
+        )
+    found = []
+    for name, table in tables.items():
+        top.section("behaviour").one_of(name, name, tuple(BEHAVIOURS))
+        kind = BEHAVIOURS[name]
+        table.only([f.name for f in fields(kind)])
+        made = kind(**{f.name: _read_field(table, f) for f in fields(kind)})
+        if made.needs_input and not family.source:
+            top.section("behaviour").fail(name, "it needs an input; add a node of kind input")
+        if made.needs_expressed and family.style != "gene":
+            top.section("behaviour").fail(
+                name, 'it compares with simple regulation, so it needs style = "gene"'
+            )
+        found.append(made)
+    return tuple(found)
+
+
+def _read_field(table: Section, field: Any) -> float | int:
+    if field.default is MISSING:
+        return table.number(field.name)
+    if isinstance(field.default, int):
+        return table.integer(field.name, field.default, low=1, high=100_000)
+    return table.number(field.name, float(field.default), low=0.0)
