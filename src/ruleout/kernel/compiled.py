@@ -68,7 +68,8 @@ class CompiledBackend:
         from ruleout.kernel.driver import EXPLICIT, IMPLICIT, RUNNING, integrate
 
         size = len(y0)
-        leads = which[::group]
+        # The driver reads it behind its address, so it must not be a strided view.
+        leads = np.ascontiguousarray(which[::group])
         plan = schedule.plan
         begin = plan.segment_at[leads]
         rows = Rows(
