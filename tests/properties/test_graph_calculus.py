@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 from ruleout.equations import build, setups
 from ruleout.experiments.types import Condition, Experiments, InputCourse, Readout
 from ruleout.expressions import differentiate, evaluate, sym, symbols
+from ruleout.mechanism import parameter_names
 from ruleout.mechanism.types import Edge, Mechanism, Node
 from ruleout.variants import expand
 from ruleout.variants.contests import has_half
@@ -60,6 +61,10 @@ def mechanisms(draw, contested: int = 0, material: bool = True) -> Mechanism:
         edges[f"m_{name}"] = Edge(
             f"m_{name}", ((name, 1.0),), ((other, 1.0),), ("converts",), (law,), reversible=back
         )
+    if material and draw(st.booleans()):
+        edges["flow"] = Edge(
+            "flow", (), (("a", 1.0),), ("converts",), rates=(("", "k * x0 / (m + b)"),)
+        )
     if draw(st.booleans()):
         target = draw(st.sampled_from(list(edges)))
         half = has_half(edges[target]) and draw(st.booleans())
@@ -105,6 +110,16 @@ def test_arcs_have_the_signs_of_the_jacobian(mechanism, seed):
                 assert slope > 0.0
             elif found == {-1}:
                 assert slope < 0.0
+
+
+@QUICK
+@given(mechanisms())
+def test_every_symbol_is_accounted_for(mechanism):
+    """Parameters are just what the equations use, and all are known to the mechanism."""
+    model = first_model(mechanism)
+    used = symbols(*model.rhs) - set(model.states) - set(mechanism.nodes) - {"time"}
+    assert set(model.parameters) == used
+    assert list(model.parameters) == [n for n in parameter_names(mechanism) if n in used]
 
 
 @QUICK

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from ruleout.equations.assembly import Assembly
 from ruleout.equations.assumptions import assumptions
-from ruleout.equations.parameters import catalogue
+from ruleout.equations.parameters import equation_parameters
 from ruleout.equations.starts import node_start, state_start
 from ruleout.equations.types import Model, Start
 from ruleout.experiments.types import Experiments
@@ -64,7 +64,7 @@ def build(variant: Variant, mechanism: Mechanism, experiments: Experiments) -> M
     used |= _start_symbols(wiring, starts, experiments)
     return Model(
         variant=variant,
-        parameters=catalogue(wiring, mechanism, used),
+        parameters=equation_parameters(wiring, mechanism, used),
         states=tuple(equations),
         rhs=tuple(equations.values()),
         starts=starts,

@@ -2,36 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Iterator
+from collections.abc import Collection, Iterable
 
-from ruleout.equations.types import Parameter, ParameterKind
+from ruleout.equations.types import Parameter
 from ruleout.expressions import ZERO, Expr, ordered, substitute
-from ruleout.mechanism.parameters import divides
-from ruleout.mechanism.types import Edge, Mechanism, Node
+from ruleout.mechanism import Role, parameter_names
+from ruleout.mechanism.types import Edge, Mechanism
 from ruleout.variants import Wiring
-from ruleout.variants.contests import has_half, has_hill, onto_edge
 from ruleout.variants.rates import rate_expression
-
-
-class Units:
-    """Display units built from the mechanism's time and amount units."""
-
-    def __init__(self, mechanism: Mechanism) -> None:
-        self.time = mechanism.time_unit
-        self.amount = mechanism.amount_unit
-
-    def of_node(self, node: Node | None) -> str:
-        """Return the unit of a node's amount; a switched node is a fraction."""
-        return "fraction" if node is not None and node.kind == "switched" else self.amount
-
-    def per_time(self, over: str = "", below: Iterable[str] = ()) -> str:
-        """Return ``over / (below * time)``, cancelled where they agree; a fraction has no unit."""
-        bottom = [unit for unit in below if unit != "fraction"]
-        if over in bottom:
-            bottom.remove(over)
-            over = ""
-        top = "1" if over in ("", "fraction") else over
-        return "/".join([top, *bottom, self.time])
 
 
 def _additive_terms(rate: Expr) -> list[Expr]:
@@ -55,89 +33,86 @@ def rate_constants(rate: Expr, own: Collection[str]) -> frozenset[str]:
     return frozenset(found)
 
 
-def _of_node(node: Node, units: Units) -> Iterator[Parameter]:
-    name, amount = node.name, units.of_node(node)
-    if node.kind in ("switched", "expressed"):
-        # Gain and loss of a switched node share its unit, the fraction, which is no unit at all.
-        made = units.per_time() if node.kind == "switched" else units.per_time(amount)
-        yield Parameter(f"{name}.basal", "rate", made)
-        yield Parameter(f"{name}.loss_rate", "rate", units.per_time())
-    if node.kind == "switched" and node.acts_on == "saturating":
-        yield Parameter(f"{name}.half_gain", "half", amount, name)
-        yield Parameter(f"{name}.half_loss", "half", amount, name)
-    yield Parameter(f"{name}.start", "start", amount)
+class _Table:
+    """Kinds and display units of the parameters of one wiring."""
+
+    def __init__(self, wiring: Wiring, mechanism: Mechanism) -> None:
+        self.wiring = wiring
+        self.time = mechanism.time_unit
+        self.amount = mechanism.amount_unit
+        self.nodes = mechanism.nodes
+
+    def unit_of(self, node: str) -> str:
+        """Return the unit of a node's amount; a switched node is a fraction."""
+        if node not in self.nodes:
+            return ""
+        return "fraction" if self.nodes[node].kind == "switched" else self.amount
+
+    def per_time(self, over: str = "", below: Iterable[str] = ()) -> str:
+        """Return ``over / (below * time)``, cancelled where they agree; a fraction has no unit."""
+        bottom = [unit for unit in below if unit != "fraction"]
+        if over in bottom:
+            bottom.remove(over)
+            over = ""
+        top = "1" if over in ("", "fraction") else over
+        return "/".join([top, *bottom, self.time])
+
+    def parameter(self, name: str, role: Role) -> Parameter:
+        """Return a parameter by what it does."""
+        edge = self.wiring.edges.get(role.owner)
+        match role.part:
+            case "basal":
+                return Parameter(name, "rate", self.per_time(self.unit_of(role.owner)))
+            case "loss_rate":
+                return Parameter(name, "rate", self.per_time())
+            case "start":
+                return Parameter(name, "start", self.unit_of(role.owner))
+            case "half_gain" | "half_loss":
+                return Parameter(name, "half", self.unit_of(role.owner), role.owner)
+            case "half":
+                return Parameter(name, "half", self.unit_of(role.source), role.source)
+            case "hill":
+                return Parameter(name, "hill", "")
+            case "delay":
+                return Parameter(name, "delay", self.time)
+        if edge is None:
+            # A start expression may speak of an edge that this wiring lacks.
+            return Parameter(name, "level", "")
+        match role.part:
+            case "target_half":
+                target = edge.targets[0][0]
+                return Parameter(name, "half", self.unit_of(target), target)
+            case "strength":
+                return self._strength(name, edge)
+            case "rate":
+                return Parameter(name, "rate", self._turnover(edge, edge.sources))
+            case "rate_back" | "release":
+                return Parameter(name, "rate", self._turnover(edge, edge.targets))
+        rate = rate_expression(edge, self.wiring.names)
+        own = [node.name for node in ordered([rate]) if node.name.startswith(f"{edge.name}.")]
+        # What an own parameter is measured in depends on the expression; no unit is claimed.
+        return Parameter(name, "rate" if name in rate_constants(rate, own) else "level", "")
+
+    def _strength(self, name: str, edge: Edge) -> Parameter:
+        source = self.unit_of(edge.sources[0][0])
+        below = [source] if edge.laws[0] == "linear" else []
+        if edge.onto is not None:
+            per_source = f"1/{source}" if below and source != "fraction" else ""
+            return Parameter(name, "level", per_source)
+        gained = self.unit_of(edge.targets[0][0]) if edge.on == "gain" else ""
+        return Parameter(name, "rate", self.per_time(gained, below))
+
+    def _turnover(self, edge: Edge, ends: Iterable[tuple[str, float]]) -> str:
+        orders = [unit for n, count in ends for unit in [self.unit_of(n)] * round(count)]
+        if edge.laws[0] != "linear":
+            orders = orders[1:]
+        return self.per_time(self.amount, orders)
 
 
-def _of_edge(edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units) -> Iterator[Parameter]:
-    name = edge.name
-    source = mechanism.nodes[edge.sources[0][0]] if edge.sources else None
-    if edge.rates:
-        yield from _of_rate(edge, wiring)
-    elif edge.material:
-        yield from _of_turnover(edge, mechanism, units)
-    elif not divides(edge, edge.effects[0]) and not edge.necessary:
-        yield Parameter(f"{name}.strength", *_strength(edge, wiring, mechanism, units))
-    if has_half(edge):
-        unit = units.of_node(source)
-        yield Parameter(f"{name}.half", "half", unit, source.name if source else "")
-    if has_hill(edge):
-        yield Parameter(f"{name}.hill", "hill", "")
-    if edge.acts_on == "saturating" and edge.targets:
-        target = mechanism.nodes[edge.targets[0][0]]
-        yield Parameter(f"{name}.target_half", "half", units.of_node(target), target.name)
-    if edge.delay is True:
-        yield Parameter(f"{name}.delay", "delay", units.time)
-
-
-def _strength(
-    edge: Edge, wiring: Wiring, mechanism: Mechanism, units: Units
-) -> tuple[ParameterKind, str]:
-    """Return kind and unit of the strength of an additive edge."""
-    source = mechanism.nodes[edge.sources[0][0]]
-    below = [units.of_node(source)] if edge.laws[0] == "linear" else []
-    if onto_edge(edge) is not None:
-        return "level", f"1/{below[0]}" if below else ""
-    target = wiring.nodes[edge.targets[0][0]]
-    gained = edge.on == "gain" and target.kind == "expressed"
-    return "rate", units.per_time(units.of_node(target) if gained else "", below)
-
-
-def _of_turnover(edge: Edge, mechanism: Mechanism, units: Units) -> Iterator[Parameter]:
-    def unit(ends: Iterable[tuple[str, float]], saturable: bool) -> str:
-        orders = [u for n, k in ends for u in [units.of_node(mechanism.nodes[n])] * round(k)]
-        if saturable and orders:
-            del orders[0]
-        return units.per_time(units.amount, orders)
-
-    saturable = edge.laws[0] != "linear"
-    yield Parameter(f"{edge.name}.rate", "rate", unit(edge.sources, saturable))
-    if edge.effects[0] == "binds":
-        yield Parameter(f"{edge.name}.release", "rate", unit(edge.targets, False))
-    elif edge.reversible:
-        yield Parameter(f"{edge.name}.rate_back", "rate", unit(edge.targets, saturable))
-
-
-def _of_rate(edge: Edge, wiring: Wiring) -> Iterator[Parameter]:
-    rate = rate_expression(edge, wiring.names)
-    names = [node.name for node in ordered([rate]) if node.op == "sym"]
-    own = [name for name in names if name.startswith(f"{edge.name}.")]
-    constants = rate_constants(rate, own)
-    for name in own:
-        # What an own parameter is measured in depends on the expression; none is claimed.
-        yield Parameter(name, "rate" if name in constants else "level", "")
-
-
-def catalogue(wiring: Wiring, mechanism: Mechanism, used: Collection[str]) -> dict[str, Parameter]:
-    """Return the parameters among ``used``, in file order of nodes, then of edges.
-
-    Names that belong to no node or edge of the wiring (a start expression may speak of an absent
-    edge) come last, as levels.
-    """
-    units = Units(mechanism)
-    known = [p for node in wiring.nodes.values() for p in _of_node(node, units)]
-    for edge in wiring.edges.values():
-        known.extend(_of_edge(edge, wiring, mechanism, units))
-    found = {p.name: p for p in known if p.name in used}
-    for name in sorted(set(used) - found.keys()):
-        found[name] = Parameter(name, "level", "")
-    return found
+def equation_parameters(
+    wiring: Wiring, mechanism: Mechanism, used: Collection[str]
+) -> dict[str, Parameter]:
+    """Return the parameters among ``used``, in file order of nodes, then of edges."""
+    table = _Table(wiring, mechanism)
+    roles = parameter_names(mechanism)
+    return {name: table.parameter(name, role) for name, role in roles.items() if name in used}
