@@ -42,18 +42,20 @@ class Descent:
     converged: NDArray[np.bool_]
 
 
-def _steps(
-    gradient: Array, curvature: Array, damping: Array, held: NDArray[np.bool_]
-) -> Array:
-    d = gradient.shape[1]
-    gradient = np.where(held, 0.0, gradient)
-    free = ~held
-    matrix = curvature * (free[:, :, None] & free[:, None, :])
+def _steps(gradient: Array, curvature: Array, damping: Array, held: NDArray[np.bool_]) -> Array:
+    """Solve (C + damping diag C) step = gradient, coordinates in ``held`` left where they are.
+
+    In units of the square roots of the diagonal the damped matrix is at least ``damping``, so that
+    directions the data say nothing about cannot make it singular.
+    """
     diagonal = np.einsum("bii->bi", curvature)
-    floor = 1e-12 * np.max(diagonal, axis=1, keepdims=True) + 1e-300
-    damped = np.where(held, 1.0, damping[:, None] * np.maximum(diagonal, floor))
-    matrix = matrix + damped[:, :, None] * np.eye(d)
-    return np.linalg.solve(matrix, gradient[:, :, None])[:, :, 0]
+    root = np.sqrt(np.maximum(diagonal, 1e-12 * np.max(diagonal, axis=1, keepdims=True) + 1e-300))
+    free = ~held
+    scaled = curvature / (root[:, :, None] * root[:, None, :])
+    scaled = np.where(free[:, :, None] & free[:, None, :], scaled, 0.0)
+    scaled += np.where(held, 1.0, damping[:, None])[:, :, None] * np.eye(gradient.shape[1])
+    pull = np.where(held, 0.0, gradient / root)
+    return np.linalg.solve(scaled, pull[:, :, None])[:, :, 0] / root
 
 
 def descend(
@@ -96,6 +98,12 @@ def descend(
             break
         model = posterior.quadratic(q[at], sample.take(at))
         gradient, curvature = model.gradient, model.curvature
+        usable = np.isfinite(curvature).all(axis=(1, 2)) & np.isfinite(gradient).all(axis=1)
+        if not usable.all():
+            active[at[~usable]] = False
+            at, gradient, curvature = at[usable], gradient[usable], curvature[usable]
+            if not len(at):
+                break
         step_tolerance = 1e-9 * np.where(np.isfinite(space.low), space.high - space.low, 1.0)
         with np.errstate(invalid="ignore"):
             held = ((q[at] <= space.low + step_tolerance) & (gradient < 0)) | (

@@ -171,19 +171,33 @@ class Noise:
             rows = points & use
             if not rows.any():
                 continue
-            if self.closed_form[self.observations.which[np.flatnonzero(points)[0]]]:
-                squares = np.nanmean((sample.z - zeta)[:, rows] ** 2, axis=1)
-                guess = 0.5 * np.log(np.maximum(squares, 1e-300))
-                guess = np.clip(guess, space.low[j], space.high[j])
-                trial = q.copy()
-                trial[:, j] = np.where(np.isfinite(guess), guess, q[:, j])
-                better = self._target(trial, zeta, sample, rows, j) > self._target(
-                    q, zeta, sample, rows, j
-                )
-                q[better, j] = trial[better, j]
+            plain = self.closed_form[self.observations.which[points]].all()
+            if plain and not sample.censored[:, rows].any():
+                q[:, j] = self._plain_sd(q[:, j], (sample.z - zeta)[:, rows], j)
+                continue
             for _ in range(4):
                 q = self._newton(q, zeta, sample, rows, j)
         return q
+
+    def _plain_sd(self, before: Array, residual: Array, j: int) -> Array:
+        """Return the optimal coordinate of a free sd of uncensored normal residuals (B, m).
+
+        Maximises -m log sd - RSS / (2 sd²) + log prior by Newton's method in log sd.
+        """
+        space = self._space
+        m = residual.shape[1]
+        squares = np.sum(residual**2, axis=1)
+        center, precision = space.center[j], space.precision[j]
+        u = 0.5 * np.log(np.maximum(squares / m, 1e-300))
+        for _ in range(12):
+            ratio = squares * np.exp(-2.0 * u)
+            slope = ratio - m - precision * (u - center)
+            move = slope / (2.0 * ratio + precision + 1e-300)
+            u = u + np.clip(move, -1.0, 1.0)
+            if np.all(np.abs(move) < 1e-9):
+                break
+        u = np.clip(u, space.low[j], space.high[j])
+        return np.where(np.isfinite(squares), u, before)
 
     def _target(
         self, q: Array, zeta: Array, sample: Sample, rows: NDArray[np.bool_], j: int

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from ruleout.equations import setups
 from ruleout.equations.types import Model, Setup, Start
 from ruleout.experiments.types import Experiments, Readout
-from ruleout.expressions import evaluate, symbols
+from ruleout.expressions import ZERO, const, evaluate, substitute, symbols
 from ruleout.fitting.observations import Points
 from ruleout.fitting.parameters import NOISE_KINDS, Catalogue
 from ruleout.kernel import Status, compile_system
@@ -33,6 +33,31 @@ class _Group:
     system: System
     setups: tuple[Setup, ...]
     columns: NDArray[np.intp]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Rest:
+    """A rest to be found once for several conditions, after the example of one of them."""
+
+    setup: Setup
+    system: System
+    conditions: tuple[str, ...]
+    columns: NDArray[np.intp]
+    factor: Array
+    shift: Array
+
+
+def _rests_at_zero(setup: Setup) -> bool:
+    """Return whether zero, from where rest is sought, is a steady state for all parameters."""
+    system = setup.rest_system
+    assert system is not None
+    known = {name: ZERO for name in system.states}
+    for name, factor, shift in zip(
+        system.parameters, setup.rest_factor, setup.rest_shift, strict=True
+    ):
+        if factor == 0.0:
+            known[name] = const(shift)
+    return all(rate is ZERO for rate in substitute(system.rhs, known))
 
 
 def _columns(names: Sequence[str], catalogue: Catalogue) -> NDArray[np.intp]:
@@ -72,6 +97,9 @@ class Predictor:
         times = self._times(experiments, points)
         prepared = setups(model, experiments, times)
         self._setups = {s.condition: s for s in prepared}
+        self._places = {
+            s.condition: {name: j for j, name in enumerate(s.system.states)} for s in prepared
+        }
         groups: dict[System, list[Setup]] = {}
         for setup in prepared:
             groups.setdefault(setup.system, []).append(setup)
@@ -82,6 +110,12 @@ class Predictor:
                 _columns(system.parameters, catalogue),
             )
             for system, members in groups.items()
+        ]
+        self._given_starts = [
+            (s, j, start)
+            for s in prepared
+            for j, start in enumerate(s.starts)
+            if not start.rest and start.value is not None and start.value is not ZERO
         ]
         self._rests = self._plan_rests(prepared)
         self._plan_readouts(experiments, times)
@@ -108,11 +142,11 @@ class Predictor:
                 wanted.setdefault(reference.condition or c, set()).add(reference.time)
         return {c: np.array(sorted(ts)) for c, ts in wanted.items()}
 
-    def _plan_rests(self, prepared: Sequence[Setup]) -> list[tuple[Setup, tuple[str, ...]]]:
-        """Return one setup for each distinct rest, with the conditions that share it."""
+    def _plan_rests(self, prepared: Sequence[Setup]) -> list[_Rest]:
+        """Return every distinct rest to be found, with the conditions that share it."""
         shared: dict[object, list[Setup]] = {}
         for setup in prepared:
-            if setup.rest_system is None:
+            if setup.rest_system is None or _rests_at_zero(setup):
                 continue
             held = any(p.startswith("start:") for p in setup.rest_system.parameters)
             key = (
@@ -122,7 +156,18 @@ class Predictor:
                 setup.condition if held else "",
             )
             shared.setdefault(key, []).append(setup)
-        return [(members[0], tuple(s.condition for s in members)) for members in shared.values()]
+        return [
+            _Rest(
+                members[0],
+                members[0].rest_system,
+                tuple(s.condition for s in members),
+                _columns(members[0].rest_system.parameters, self.catalogue),
+                np.array(members[0].rest_factor),
+                np.array(members[0].rest_shift),
+            )
+            for members in shared.values()
+            if members[0].rest_system is not None
+        ]
 
     def _plan_readouts(self, experiments: Experiments, times: Mapping[str, Array]) -> None:
         """Lay out the distinct (condition, readout, time) triples and what turns them into rows."""
@@ -168,8 +213,7 @@ class Predictor:
         return np.concatenate([values, pad], axis=1)
 
     def _start_value(self, start: Start, setup: Setup, values: Array) -> Array | float:
-        if start.value is None:
-            return 0.0
+        assert start.value is not None
         if start.value.op == "const":
             return start.value.value
         env = {
@@ -187,15 +231,11 @@ class Predictor:
         starts = {
             s.condition: np.zeros((rows, len(s.system.states))) for s in self._setups.values()
         }
-        for setup in self._setups.values():
-            for j, start in enumerate(setup.starts):
-                if not start.rest:
-                    starts[setup.condition][:, j] = self._start_value(start, setup, values)
-        for setup, conditions in self._rests:
-            system = setup.rest_system
-            assert system is not None
-            p = values[:, _columns(system.parameters, self.catalogue)]
-            p = p * np.array(setup.rest_factor) + np.array(setup.rest_shift)
+        for setup, j, start in self._given_starts:
+            starts[setup.condition][:, j] = self._start_value(start, setup, values)
+        for rest in self._rests:
+            setup, system = rest.setup, rest.system
+            p = values[:, rest.columns] * rest.factor + rest.shift
             for j, name in enumerate(system.parameters):
                 if name.startswith("start:"):
                     at = setup.system.states.index(name[6:])
@@ -203,7 +243,7 @@ class Predictor:
             program = compile_system(system)
             found = program.steady(np.zeros((rows, len(system.states))), p, group=group)
             status = np.where(status == Status.OK, found.status, status)
-            for condition in conditions:
+            for condition in rest.conditions:
                 target = self._setups[condition]
                 for j, start in enumerate(target.starts):
                     if start.rest:
@@ -213,11 +253,11 @@ class Predictor:
 
     def _levels(
         self, values: Array, rtol: float, group: int
-    ) -> tuple[dict[str, dict[str, Array]], NDArray[np.int8]]:
-        """Solve every condition: node amounts (B, M) by condition, and the worst status (B,)."""
+    ) -> tuple[dict[str, Array], NDArray[np.int8]]:
+        """Solve every condition: states (B, M, N) by condition, and the worst status (B,)."""
         rows = len(values)
         starts, status = self._starts(values, group)
-        levels: dict[str, dict[str, Array]] = {}
+        levels: dict[str, Array] = {}
         for g in self._groups:
             count = len(g.setups)
             p = np.tile(values[:, g.columns], (count, 1))
@@ -237,18 +277,15 @@ class Predictor:
                 outcome = solution.status.reshape(count, rows)
                 for row in outcome:
                     status = np.where(status == Status.OK, row, status)
-            for k, setup in enumerate(g.setups):
-                m = len(setup.protocol.times)
-                nodes: dict[str, Array] = {
-                    name: states[k, :, :m, j] for j, name in enumerate(g.system.states)
-                }
-                for name, fixed in setup.fixed_levels.items():
-                    nodes[name] = np.broadcast_to(np.array(fixed), (rows, m))
-                levels[setup.condition] = nodes
+                for k, setup in enumerate(g.setups):
+                    levels[setup.condition] = states[k]
+            else:
+                for setup in g.setups:
+                    levels[setup.condition] = np.zeros((rows, len(setup.protocol.times), 0))
         return levels, status
 
-    def _read(self, values: Array, levels: Mapping[str, Mapping[str, Array]]) -> Array:
-        """Return predicted readouts (B, n) from node amounts."""
+    def _read(self, values: Array, levels: Mapping[str, Array]) -> Array:
+        """Return predicted readouts (B, n) from the states of every condition."""
         out = np.empty((len(values), len(self.points)))
         with np.errstate(all="ignore"):
             for readout, condition, rows, at in self._curves:
@@ -266,13 +303,23 @@ class Predictor:
                 scale = scale * np.exp(batch)
             return out * scale + values[:, self._offset_column] + self._offset_constant
 
-    def _amount(
-        self, readout: Readout, condition: str, levels: Mapping[str, Mapping[str, Array]]
-    ) -> Array:
-        nodes = levels[condition]
-        value = evaluate([readout.of], nodes)[0]
-        shape = next(iter(nodes.values())).shape
-        return np.broadcast_to(np.asarray(value, dtype=float), shape)
+    def _amount(self, readout: Readout, condition: str, levels: Mapping[str, Array]) -> Array:
+        """Return the readout's expression over the output times of one condition, (B, M)."""
+        setup, states = self._setups[condition], levels[condition]
+        times = len(setup.protocol.times)
+        places = self._places[condition]
+        amounts = {
+            name: states[:, :times, places[name]]
+            if name in places
+            else np.array(setup.fixed_levels[name])[None]
+            for name in symbols(readout.of)
+        }
+        if readout.of.op == "sym":
+            value = amounts[readout.of.name]
+        else:
+            value = np.asarray(evaluate([readout.of], amounts)[0], dtype=float)
+        shape = (len(states), times)
+        return value if value.shape == shape else np.broadcast_to(value, shape)
 
     def __call__(self, q: Array, rtol: float = 1e-6) -> tuple[Array, NDArray[np.int8]]:
         """Predict the readouts.
@@ -322,9 +369,7 @@ class Predictor:
             if not self.dynamic[j] and name.split("@")[0].rsplit(".", 1)[1] not in NOISE_KINDS
         ]
         if still:
-            first = {
-                c: {name: a[::copies] for name, a in nodes.items()} for c, nodes in levels.items()
-            }
+            first = {condition: states[::copies] for condition, states in levels.items()}
             for j in still:
                 moved = q.copy()
                 moved[:, j] += step[:, j]

@@ -27,8 +27,11 @@ OVERDISPERSION = 1.5
 
 
 def walkers_for(dimension: int) -> int:
-    """Return the number of walkers of an ensemble: at least 32 and at least 2 D + 2, even."""
-    return max(32, 2 * dimension + 2)
+    """Return the number of walkers of an ensemble: at least 64 and at least 2 D + 2, even.
+
+    Below some 64 rows the cost of an iteration is that of the call, whatever the number of rows.
+    """
+    return max(64, 2 * dimension + 2)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
