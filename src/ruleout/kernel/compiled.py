@@ -13,9 +13,9 @@ from numpy.typing import NDArray
 
 from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import Lowered
-from ruleout.kernel.memory import Lanes, Rows, addresses
+from ruleout.kernel.memory import Lanes, Rows
 from ruleout.kernel.reference import Tape
-from ruleout.kernel.schedule import Integers, Plan, Schedule, pack
+from ruleout.kernel.schedule import Integers, Schedule, addresses, pack
 from ruleout.kernel.steps import Setting
 from ruleout.kernel.types import Array, Protocol, Status
 
@@ -65,29 +65,16 @@ class CompiledBackend:
         max_steps: int,
     ) -> tuple[Array, Flags, NDArray[np.int32]]:
         """Return states (B, M, N), status and steps; see :meth:`Program.solve`."""
-        from ruleout.kernel.driver import EXPLICIT, IMPLICIT, RUNNING, integrate
+        from ruleout.kernel.driver import EXPLICIT, IMPLICIT, integrate
 
-        size = len(y0)
-        # The driver reads it behind its address, so it must not be a strided view.
-        leads = np.ascontiguousarray(which[::group])
         plan = schedule.plan
+        leads = which[::group]
         begin = plan.segment_at[leads]
-        rows = Rows(
-            y=y0.copy(),
-            p=p,
-            states=np.full((size, schedule.outputs, self._outputs), np.nan),
-            status=np.full(size, RUNNING),
-            steps=np.zeros(size, dtype=np.int64),
-            which=leads,
-            segment=begin - 1,
-            output=plan.time_at[leads],
-            t=plan.breaks[begin],
-            h=np.zeros(len(leads)),
-            mark=np.empty(len(leads)),
-            started=np.empty(len(leads)),
-        )
+        shape = (len(y0), schedule.outputs, self._outputs)
+        started = plan.breaks[begin]
+        rows = Rows(y0.copy(), p, shape, leads, begin - 1, plan.time_at[leads], started)
         vectors = _vectors(group, self._code.width)
-        most, where = float(max_steps), addresses(*plan)
+        most = float(max_steps)
         patience = _PATIENCE * max(1.0, (1e-6 / rtol) ** 0.2)
 
         def run(groups: Integers) -> None:
@@ -95,7 +82,7 @@ class CompiledBackend:
             lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
             lanes.tolerance[len(Setting) :] = atol
             stiff = np.empty(len(groups), dtype=np.int64)
-            directory = lanes.directory(where, rows, group)
+            directory = lanes.directory(schedule, rows, group)
             (at,) = addresses(directory)
             left = integrate(EXPLICIT, at, groups, most, patience, stiff)
             if left:
@@ -105,7 +92,7 @@ class CompiledBackend:
 
         _in_parallel(run, np.arange(len(leads)), _ROWS_PER_TASK // group + 1)
         if schedule.ends_at_rest:
-            self._end(rows, plan, which)
+            self._end(rows, p, schedule, which)
         return rows.states, rows.status.astype(np.int8), rows.steps.astype(np.int32)
 
     def steady(self, y0: Array, q: Array) -> tuple[Array, Flags]:
@@ -113,8 +100,8 @@ class CompiledBackend:
         return self._settle(y0, q, self._unchanged, np.zeros(len(y0), dtype=np.int64))
 
     @cached_property
-    def _unchanged(self) -> Plan:
-        """The plan in which parameters are as given and nothing is asked for but rest."""
+    def _unchanged(self) -> Schedule:
+        """The schedule in which parameters are as given and nothing is asked for but rest."""
         protocol = Protocol(
             breaks=np.zeros(1),
             factor=np.ones((1, self._p)),
@@ -123,28 +110,16 @@ class CompiledBackend:
             add=np.zeros((1, self._n)),
             times=np.array([np.inf]),
         )
-        return pack([protocol], self._n, self._p, forced=False).plan
+        return pack([protocol], self._n, self._p, forced=False)
 
-    def _settle(self, y: Array, p: Array, plan: Plan, which: Integers) -> tuple[Array, Flags]:
+    def _settle(
+        self, y: Array, p: Array, schedule: Schedule, which: Integers
+    ) -> tuple[Array, Flags]:
         """Return the steady states under the last segment of each row's protocol."""
-        from ruleout.kernel.driver import RUNNING, SETTLE, STEADY_FLOOR, STEADY_RTOL, integrate
+        from ruleout.kernel.driver import SETTLE, STEADY_FLOOR, STEADY_RTOL, integrate
 
-        size = len(y)
-        rows = Rows(
-            y=y,
-            p=p,
-            states=np.full((size, 1, self._n), np.nan),
-            status=np.full(size, RUNNING),
-            steps=np.zeros(size, dtype=np.int64),
-            which=which,
-            segment=plan.segment_at[which + 1] - 1,
-            output=plan.time_at[which + 1],
-            t=np.zeros(size),
-            h=np.zeros(size),
-            mark=np.empty(size),
-            started=np.empty(size),
-        )
-        where = addresses(*plan)
+        last, output = schedule.plan.segment_at[which + 1] - 1, schedule.plan.time_at[which + 1]
+        rows = Rows(y.copy(), p, (len(y), 1, self._n), which, last, output, 0.0)
 
         def run(part: Integers) -> None:
             lanes = self._borrow(1)
@@ -153,19 +128,20 @@ class CompiledBackend:
             lanes.tolerance[Setting.STIFF_LIMIT] = np.inf
             lanes.tolerance[Setting.SETTLE_LIMIT] = 1.0
             lanes.tolerance[Setting.FLOOR_FACTOR] = STEADY_RTOL * STEADY_FLOOR
-            directory = lanes.directory(where, rows, 1)
+            directory = lanes.directory(schedule, rows, 1)
             (at,) = addresses(directory)
             integrate(SETTLE, at, part, np.inf, np.inf, part[:0])
             self._give_back(lanes)
 
-        _in_parallel(run, np.arange(size), _ROWS_PER_TASK)
+        _in_parallel(run, np.arange(len(y)), _ROWS_PER_TASK)
         return rows.states[:, 0], rows.status.astype(np.int8)
 
-    def _end(self, rows: Rows, plan: Plan, which: Integers) -> None:
+    def _end(self, rows: Rows, p: Array, schedule: Schedule, which: Integers) -> None:
         """Carry rows whose protocol ends in a steady state there."""
+        plan = schedule.plan
         at = np.flatnonzero((plan.endless[which] == 1) & (rows.status == Status.OK))
         k = which[at]
-        y, status = self._settle(rows.y[at], rows.p[at], plan, k)
+        y, status = self._settle(rows.y[at], p[at], schedule, k)
         rows.states[at, plan.time_at[k + 1] - plan.time_at[k]] = y[:, : self._outputs]
         rows.status[at] = status
 

@@ -20,7 +20,7 @@ from typing import Any
 
 import numpy as np
 
-from ruleout.kernel.memory import Place
+from ruleout.kernel.memory import RUNNING, Place
 from ruleout.kernel.pointers import (
     compiled,
     entry_point,
@@ -46,7 +46,6 @@ _NEWTON = STEP_FUNCTIONS.index("newton")
 _CONTROLS = len(Control)
 
 
-RUNNING = -1
 _HAND_OVER = -2
 
 EXPLICIT, IMPLICIT, SETTLE = 0, 1, 2
@@ -323,34 +322,15 @@ def _polish(at: int, bits: int) -> None:
 
 
 @compiled
-def _share_step(at: int, slots: int) -> None:
-    """Let every lane of a group take the step that its leader found."""
+def _share(at: int, slots: int, first: int, last: int) -> None:
+    """Let every lane of a group have what its leader found, for control entries first..last."""
     group = read_int(at, Place.GROUP)
     for slot in range(slots):
         lead = slot * group
-        step = _control(at, lead, Control.STEP)
-        for lane in range(lead + 1, lead + group):
-            _set_control(at, lane, Control.STEP, step)
-
-
-@compiled
-def _share_worst(at: int, slots: int) -> None:
-    """Let every lane of a group have its largest error, and its stiffness where any lane has it.
-
-    The leader's alone would not do: at a fixed point it has no error, and explicit steps grow until
-    the deviation of the other lanes explodes. A lane that is NaN counts only if it leads.
-    """
-    group = read_int(at, Place.GROUP)
-    for slot in range(slots):
-        lead = slot * group
-        for entry in range(Control.ERROR, Control.STIFFNESS + 1):
-            worst = _control(at, lead, entry)
+        for entry in range(first, last + 1):
+            value = _control(at, lead, entry)
             for lane in range(lead + 1, lead + group):
-                other = _control(at, lane, entry)
-                if other > worst:
-                    worst = other
-            for lane in range(lead, lead + group):
-                _set_control(at, lane, entry, worst)
+                _set_control(at, lane, entry, value)
 
 
 @compiled
@@ -360,7 +340,7 @@ def _prepare(at: int, slots: int) -> int:
     for v in range(read_int(at, Place.VECTORS)):
         invoke(whole(at, Place.STEP_CODE, _START), read_int(at, Place.BLOCKS) + 64 * v, n)
     if group > 1:
-        _share_step(at, slots)
+        _share(at, slots, Control.STEP, Control.STEP)
     bad = 0
     for slot in range(slots):
         g, lead = whole(at, Place.HOLDS, slot), slot * group
@@ -414,7 +394,6 @@ def integrate(
         set_whole(at, Place.HOLDS, lane, -1)
     following, left, busy = 0, 0, 0
     refill, changed = True, False
-    flagged = np.zeros(vectors, dtype=np.int64)
     while True:
         while refill or changed:
             if refill:
@@ -435,12 +414,9 @@ def integrate(
         for v in range(vectors):
             invoke(attempt, blocks + 64 * v, n)
         if group > 1:
-            _share_worst(at, slots)
-        # A group may reach into the next vector, so all of them step before any is looked at.
+            _share(at, slots, Control.ERROR, Control.STIFFNESS)
         for v in range(vectors):
-            flagged[v] = invoke(commit, blocks + 64 * v, n)
-        for v in range(vectors):
-            bits = flagged[v]
+            bits = invoke(commit, blocks + 64 * v, n)
             if bits == 0:
                 continue
             if mode == SETTLE:

@@ -3,16 +3,17 @@
 from __future__ import annotations
 
 from enum import IntEnum
-from typing import Any, NamedTuple
 
 import numpy as np
-from numpy.typing import NDArray
 
 from ruleout.kernel.assembly import ALIGNMENT
 from ruleout.kernel.engine import SystemCode
-from ruleout.kernel.schedule import Integers
+from ruleout.kernel.schedule import Integers, Schedule, addresses
 from ruleout.kernel.steps import Control, Setting
 from ruleout.kernel.types import Array
+
+RUNNING = -1
+"""Status of a row under way."""
 
 
 class Place(IntEnum):
@@ -49,7 +50,8 @@ class Place(IntEnum):
     ADD = 20
     TIMES = 21
     ENDLESS = 22
-    # The arrays of Rows.
+    # Rows: states, parameters, outputs, status and steps of each; protocol, segment, next output,
+    # time, step, time at the last look at progress and largest state at the start of each group.
     ROW_Y = 23
     ROW_P = 24
     STATES = 25
@@ -67,35 +69,55 @@ class Place(IntEnum):
     OUTPUTS = 37
 
 
-class Rows(NamedTuple):
-    """Where every row and every group of rows stands; in the order of the directory.
+class Rows:
+    """Where every row and every group of rows stands.
+
+    Parameters
+    ----------
+    y : (B, N) array
+        States on entering a lane; overwritten on leaving it.
+    p : (B, P) array
+    shape : tuple of int
+        Shape (B, M, N or N - 1) of the outputs; a last state that is time is left out.
+    which, segment, output : int64 arrays, one entry per group
+        Protocol, segment in force, next output.
+    begin : array or float
+        Time at which each group begins.
 
     Attributes
     ----------
-    y : (B, N) array
-        States on entering and on leaving a lane.
-    p : (B, P) array
-    states : (B, M, N or N - 1) array
-        Outputs; a last state that is time is left out.
+    y, states : arrays
     status, steps : (B,) int64 arrays
-    which, segment, output : int64 arrays, one entry per group
-        Protocol, segment in force, next output.
-    t, h, mark, started : arrays, one entry per group
-        Time, step, time at the last look at progress, largest state at the start.
     """
 
-    y: Array
-    p: Array
-    states: Array
-    status: Integers
-    steps: Integers
-    which: Integers
-    segment: Integers
-    output: Integers
-    t: Array
-    h: Array
-    mark: Array
-    started: Array
+    def __init__(
+        self,
+        y: Array,
+        p: Array,
+        shape: tuple[int, int, int],
+        which: Integers,
+        segment: Integers,
+        output: Integers,
+        begin: Array | float,
+    ) -> None:
+        self.y = y
+        self.states = np.full(shape, np.nan)
+        self._progress = np.empty((3, len(which)), dtype=np.int64)
+        self._progress[:] = which, segment, output
+        self._times = np.zeros((4, len(which)))
+        self._times[0] = begin
+        self._outcome = np.zeros((2, len(y)), dtype=np.int64)
+        self.status, self.steps = self._outcome
+        self.status[:] = RUNNING
+        blocks = (y, p, self.states, self._outcome, self._progress, self._times)
+        self._blocks = blocks
+        at = addresses(*blocks)
+        self.directory = [
+            *at[:3],
+            *(at[3] + 8 * k * len(y) for k in range(2)),
+            *(at[4] + 8 * k * len(which) for k in range(3)),
+            *(at[5] + 8 * k * len(which) for k in range(4)),
+        ]
 
 
 class Lanes:
@@ -145,23 +167,11 @@ class Lanes:
             *addresses(*self._newton, self._newton_blocks),
         ]
 
-    def directory(self, plan_addresses: list[int], rows: Rows, group: int) -> Integers:
-        """Return the directory of these lanes, a plan and rows."""
-        shape = rows.states.shape
-        entries = [
-            *self._directory,
-            *plan_addresses,
-            *addresses(*rows),
-            group,
-            shape[2],
-            shape[1],
-        ]
-        return np.array(entries, dtype=np.int64)
-
-
-def addresses(*arrays: NDArray[Any]) -> list[int]:
-    """Return where the arrays begin in memory."""
-    return [array.__array_interface__["data"][0] for array in arrays]
+    def directory(self, schedule: Schedule, rows: Rows, group: int) -> Integers:
+        """Return the directory of these lanes, a schedule and rows."""
+        _, outputs, recorded = rows.states.shape
+        entries = (*self._directory, *schedule.directory, *rows.directory)
+        return np.array((*entries, group, recorded, outputs), dtype=np.int64)
 
 
 def aligned_zeros(*shape: int) -> Array:

@@ -54,11 +54,19 @@ class Schedule:
         Largest number of output times of a protocol, the steady state included.
     ends_at_rest : bool
         Whether any protocol ends in a steady state.
+    directory : tuple of int
+        Addresses of the plan's arrays.
     """
 
     plan: Plan
     outputs: int
     ends_at_rest: bool
+    directory: tuple[int, ...]
+
+
+def addresses(*arrays: NDArray[Any]) -> tuple[int, ...]:
+    """Return where the arrays begin in memory."""
+    return tuple(array.__array_interface__["data"][0] for array in arrays)
 
 
 def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced: bool) -> Schedule:
@@ -90,7 +98,8 @@ def pack(protocols: Sequence[Protocol], n_states: int, n_parameters: int, forced
         times=_packed(finite),
         endless=np.array(endless, dtype=np.int64),
     )
-    return Schedule(plan, max(len(p.times) for p in protocols), any(endless))
+    outputs = max(len(p.times) for p in protocols)
+    return Schedule(plan, outputs, any(endless), addresses(*plan))
 
 
 def _offsets(counts: list[int]) -> Integers:
