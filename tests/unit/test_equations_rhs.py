@@ -343,6 +343,15 @@ def test_rates_stay_finite_and_drive_back_below_zero(case_of, law, effect):
         assert values[model.states.index(state)] > 0.0
 
 
+@pytest.mark.parametrize("order", [1, 2, 3, 0.5, 1.5])
+def test_mass_action_never_uses_up_what_is_not_there(case_of, order):
+    """A plain square would drain a level that is a little below zero faster and faster."""
+    fields = f'from = {{ a = {order} }}\nto = "b"\neffect = "converts"'
+    model = model_of(case_of(POOLS + material(fields), READ.format("a")))
+    at = point(model) | {"a": -1e-6}
+    assert evaluate(model.rhs, at)[0] >= 0.0
+
+
 def test_parameters_have_kinds_units_and_sources(case_of):
     text = NODES + edge("e", "x", "w", "stimulates", 'law = "hill"\ndelay = true')
     text += edge("f", "w", "x", "stimulates", 'law = "saturating"')

@@ -66,14 +66,10 @@ class _Side:
 
     def total(self) -> Expr:
         """Return the sum of the terms that share the node's own a(u)."""
-        return _sum((self.base, *self.shared))
-
-
-def _sum(terms: Collection[Expr]) -> Expr:
-    total = ZERO
-    for term in terms:
-        total = total + term
-    return total
+        total = self.base
+        for term in self.shared:
+            total = total + term
+        return total
 
 
 class Assembly:
@@ -169,6 +165,7 @@ class Assembly:
         return self._on(edge) * self._scaled(edge, term)
 
     def _factor(self, edge: Edge) -> Expr:
+        """Return the factor of a necessary edge: one once it is cut, as in a wiring without it."""
         term = self._scaled(edge, self._response(edge, self._signal(edge)))
         on = self._on(edge)
         return term if on is ONE else 1.0 + on * (term - 1.0)
@@ -219,7 +216,7 @@ class Assembly:
                 side.divisors.append(self._divisor(edge))
             elif edge.necessary:
                 side.factors.append(self._factor(edge))
-            elif edge.acts_on is None:
+            elif edge.acts_on is None or node.kind != "switched":
                 side.shared.append(self._additive(edge))
             else:
                 side.own.append((edge, self._additive(edge)))
@@ -247,7 +244,7 @@ class Assembly:
         left = self._availability(node, loss, x, f"{node.name}.half_loss")
         if node.kind == "switched":
             return self._availability(node, gain, 1.0 - x, f"{node.name}.half_gain"), left
-        return gain.scaled(_sum((gain.total(), *(term for _, term in gain.own)))), left
+        return gain.scaled(gain.total()), left
 
     def flows(self, node: str) -> list[tuple[float, Expr]]:
         """Return what material edges bring to a node: amounts per turnover, and turnovers."""

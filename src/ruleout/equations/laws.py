@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ruleout.expressions import ONE, ZERO, Expr, apply, const
+from ruleout.expressions import ZERO, Expr, apply, const
 
 TINY = 1e-12
 """Amounts are raised to at least this before a Hill exponent is applied."""
@@ -43,12 +43,14 @@ class Laws:
         return s**hill / (half**hill + s**hill)
 
     def power(self, s: Expr, order: float) -> Expr:
-        """Return ``s ** order``; small whole orders as products, others of a level not negative."""
-        if order == int(order) and 0 < order <= 4:
-            result = ONE
-            for _ in range(int(order)):
-                result = result * s
-            return result
-        if s is ZERO:
-            return ZERO
-        return (apply("max", s, ZERO) if self.guarded else s) ** order
+        """Return ``s ** order``, of the sign of ``s`` or zero below zero."""
+        if s is ZERO or order == 1.0:
+            return s
+        if not self.guarded:
+            return s**order
+        if order == int(order):
+            clipped = apply("max", s, ZERO)
+            for _ in range(int(order) - 1):
+                s = s * clipped
+            return s
+        return s * apply("max", s, const(TINY)) ** (order - 1.0)
