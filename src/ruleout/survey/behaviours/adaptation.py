@@ -68,12 +68,12 @@ class Adaptation:
         states, solved = course(subject, first[exact], risen[exact], TIMES)
         judged[exact[~solved]] = False
         departure = np.abs(states[:, :, subject.output] / start[exact, None] - 1.0)
-        sensitivity[exact[solved]] = _top(departure[solved]) / step
+        sensitivity[exact[solved]] = top_of(departure[solved]) / step
         shown = judged & (precision > self.precision) & (sensitivity > self.sensitivity)
         return Score(judged, shown, {"sensitivity": sensitivity, "precision": precision})
 
 
-def _top(values: Array) -> Array:
+def top_of(values: Array) -> Array:
     """Return the largest value of each row, on the parabola through the three highest samples."""
     k = np.clip(np.argmax(values, axis=1), 1, values.shape[1] - 2)
     rows = np.arange(len(values))

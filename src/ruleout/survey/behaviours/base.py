@@ -112,10 +112,10 @@ def rest(subject: Subject, p: Array, start: Array | None = None) -> tuple[Array,
     return found.states, found.status == Status.OK, found.stable
 
 
-def course(subject: Subject, y0: Array, p: Array, times: Array) -> tuple[Array, Flags]:
-    """Return the states (M, K, N) at ``times`` from ``y0`` (M, N) on, and whether all went well."""
-    n, m = len(subject.start), p.shape[1]
-    plain = Course(
+def plain_course(subject: Subject, times: Array) -> Course:
+    """Return the protocol that changes nothing and puts out at ``times``."""
+    n, m = len(subject.start), subject.p.shape[1]
+    return Course(
         breaks=np.array([times[0]]),
         factor=np.ones((1, m)),
         shift=np.zeros((1, m)),
@@ -123,7 +123,11 @@ def course(subject: Subject, y0: Array, p: Array, times: Array) -> tuple[Array, 
         add=np.zeros((1, n)),
         times=times,
     )
-    found = subject.program.solve(y0, p, [plain], rtol=RTOL, atol=ATOL)
+
+
+def course(subject: Subject, y0: Array, p: Array, times: Array) -> tuple[Array, Flags]:
+    """Return the states (M, K, N) at ``times`` from ``y0`` (M, N) on, and whether all went well."""
+    found = subject.program.solve(y0, p, [plain_course(subject, times)], rtol=RTOL, atol=ATOL)
     return found.states, found.status == Status.OK
 
 
