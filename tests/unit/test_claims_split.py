@@ -81,7 +81,7 @@ def test_laws_and_rates_in_dispute_are_claims(case_of):
         "xz=linear": {"v1"},
         "xz=hill": {"v2"},
     }
-    assert found["xz=hill"].text == "x stimulates z with the hill law"
+    assert found["xz=hill"].text == "x stimulates z with the Hill law"
 
 
 def test_edges_that_rules_tie_together_are_one_claim(case_of):
@@ -166,3 +166,23 @@ effect = "stimulates"
     found = split(case_of(BASE + node))
     assert found["w"].text == "w takes part"
     assert found["w"].holds_in == {"v2"}
+
+
+@pytest.mark.parametrize(
+    ("fields", "text"),
+    [
+        ('from = "u"\nonto = "xz"\neffect = "stimulates"', "u strengthens xz"),
+        ('from = "u"\nonto = "xz"\neffect = "inhibits"', "u weakens xz"),
+        ('from = "u"\nonto = "xz.half"\neffect = "stimulates"', "u raises xz.half"),
+        ('from = "z"\nto = "p"\neffect = "converts"', "z is converted to p"),
+        ('from = { z = 2 }\nto = "p"\neffect = "converts"', "2 z is converted to p"),
+        ('from = "p"\neffect = "converts"', "p is lost"),
+        ('to = "p"\neffect = "converts"', "p flows in"),
+        ('from = ["z", "q"]\nto = "p"\neffect = "binds"', "z + q bind to p"),
+    ],
+)
+def test_edges_are_said_in_plain_words(case_of, fields, text):
+    base = BASE.replace('to = "z"\n', 'to = "z"\nlaw = "hill"\n')
+    base += '[node.p]\nkind = "pool"\n[node.q]\nkind = "pool"\n'
+    found = split(case_of(base + f"[edge.e]\n{fields}\ncontested = true\n"))
+    assert found["e"].text == text

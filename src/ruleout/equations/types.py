@@ -117,7 +117,8 @@ class Setup:
         Lasting change factors, for parameters used in start expressions.
     rest_system : System or None
         Equations under which the ``rest`` starts are found: states with a given start are held
-        there as parameters ``start:NODE``; None if no state starts at rest.
+        there as parameters ``start:STATE``, and nodes with one that are no states of ``system``
+        (clamped ones, say) at its value; None if no state starts at rest.
     rest_factor, rest_shift : tuple of float
         Per parameter of ``rest_system``: value = factor * p + shift (inputs at resting level).
     fixed_levels : mapping of node to tuple of float

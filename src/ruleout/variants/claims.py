@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from ruleout.errors import InputError, did_you_mean
 from ruleout.mechanism.types import Claim, Edge, Mechanism
-from ruleout.variants.contests import ABSENT, matches
+from ruleout.variants.contests import ABSENT, matches, onto_half
 from ruleout.variants.expansion import where
 from ruleout.variants.loops import say_feedback
 from ruleout.variants.types import ClaimSplit, Contest, Loop, Option, Variant
@@ -41,8 +41,11 @@ def say_edge(edge: Edge, option: Option) -> str:
             clause = f"{sources} is lost"
         else:
             clause = f"{sources} is converted to {targets}"
+    elif edge.onto is None:
+        clause = f"{sources} {effect} {targets}"
     else:
-        clause = f"{sources} {effect} {edge.onto or targets}"
+        up, down = ("raises", "lowers") if onto_half(edge) else ("strengthens", "weakens")
+        clause = f"{sources} {up if effect == 'stimulates' else down} {edge.onto}"
     return clause
 
 
@@ -54,7 +57,8 @@ def _say_effects(edge: Edge, options: Sequence[Option]) -> str:
 def _law_phrase(option: Option) -> str:
     if option.rate:
         return f" with the rate '{option.rate}'"
-    return f" with the {option.law} law" if option.law else ""
+    law = "Hill" if option.law == "hill" else option.law
+    return f" with the {law} law" if law else ""
 
 
 def _choice_claims(
