@@ -1,5 +1,6 @@
 """Random mechanisms: structure found by the calculus against brute force and plain numbers."""
 
+from dataclasses import replace
 from itertools import combinations, permutations
 
 import numpy as np
@@ -11,7 +12,7 @@ from ruleout.equations import build, setups
 from ruleout.experiments.types import Condition, Experiments, InputCourse, Readout
 from ruleout.expressions import differentiate, evaluate, sym, symbols
 from ruleout.mechanism import parameter_names
-from ruleout.mechanism.types import Edge, Mechanism, Node
+from ruleout.mechanism.types import Edge, Mechanism, Node, Rule
 from ruleout.variants import expand
 from ruleout.variants.contests import has_half
 from ruleout.variants.graph import arcs
@@ -168,6 +169,58 @@ def test_a_larger_variant_at_its_limit_is_the_smaller_one(mechanism, seed):
             for parameter in strengths(edge, mechanism.nodes):
                 limit[parameter] = 1e300 if parameter.endswith(".half") else 0.0
         assert evaluate(big.rhs, limit) == pytest.approx(evaluate(small.rhs, at), rel=1e-12)
+
+
+@QUICK
+@given(mechanisms(material=False), st.data())
+def test_a_law_at_its_limit_is_the_lower_law(mechanism, data):
+    """Saturating and linear agree far below the half, Hill and saturating at hill = 1."""
+    chosen = data.draw(
+        st.sampled_from([e.name for e in mechanism.edges.values() if e.onto is None])
+    )
+    edge = replace(mechanism.edges[chosen], laws=("linear", "saturating", "hill"))
+    edges = {name: e for name, e in mechanism.edges.items() if e.onto is None} | {chosen: edge}
+    case = replace(mechanism, edges=edges)
+    found = expand(case, EXPERIMENTS)
+    models = {v.choices[chosen].law: build(v, case, EXPERIMENTS) for v in found.variants.values()}
+    name_of = {law: model.variant.name for law, model in models.items()}
+    largest = models["hill"]
+    at = random_point(symbols(*largest.rhs) | set(largest.states), np.random.default_rng(1))
+    far = {f"{chosen}.hill": 1.0}
+    lowest = models["linear"]
+    if "saturating" in models:
+        middle = evaluate(models["saturating"].rhs, at)
+        assert evaluate(largest.rhs, at | far) == pytest.approx(middle, rel=1e-9, abs=1e-9)
+        far |= {f"{chosen}.half": 1e7, f"{chosen}.strength": 1e7 * at[f"{chosen}.strength"]}
+        assert name_of["linear"] in found.contains[name_of["saturating"]]
+    assert evaluate(largest.rhs, at | far) == pytest.approx(
+        evaluate(lowest.rhs, at), rel=1e-6, abs=1e-9
+    )
+    assert name_of["linear"] in found.contains[name_of["hill"]]
+
+
+@QUICK
+@given(mechanisms(contested=3), st.data())
+def test_neighbours_are_those_of_the_definition(mechanism, data):
+    """N neighbours V if it is not in V and no other such variant is a part of the way to N."""
+    names = [name for name in mechanism.edges if name.startswith("k")]
+    kind = data.draw(st.sampled_from(["at_most_one", "together", "implies"]))
+    case = replace(mechanism, rules=(Rule("r", kind, tuple(names[:2])),))
+    # Everything is read, so that every choice can make a difference.
+    nodes = [n for n, node in case.nodes.items() if node.kind != "input"]
+    readouts = {n: Readout(n, sym(n), n) for n in nodes}
+    found = expand(case, Experiments(readouts, EXPERIMENTS.conditions))
+    chosen = {n: frozenset(v.edges) for n, v in found.variants.items()}
+    for v, mine in chosen.items():
+        rivals = {n: mine ^ theirs for n, theirs in chosen.items() if n not in found.contains[v]}
+        del rivals[v]
+        expected = {
+            n for n, way in rivals.items() if not any(other < way for other in rivals.values())
+        }
+        near = found.neighbours[v]
+        assert {n for group in near.values() for n in group} == expected
+        for choice, group in near.items():
+            assert all(set(choice.split("+")) == chosen[n] - mine for n in group)
 
 
 @QUICK
