@@ -1,5 +1,6 @@
 """The batched ODE kernel: systems in, states out."""
 
+from ruleout.kernel.compiled import set_threads
 from ruleout.kernel.program import Program, compile_system
 from ruleout.kernel.types import Protocol, Solution, Status, SteadyStates, System
 
@@ -11,4 +12,5 @@ __all__ = [
     "SteadyStates",
     "System",
     "compile_system",
+    "set_threads",
 ]

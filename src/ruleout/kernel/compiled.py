@@ -140,6 +140,9 @@ class CompiledBackend:
         """Carry rows whose protocol ends in a steady state there."""
         plan = schedule.plan
         at = np.flatnonzero((plan.endless[which] == 1) & (rows.status == Status.OK))
+        if self._lowered.forced:
+            rows.status[at] = Status.NO_STEADY_STATE
+            return
         k = which[at]
         y, status = self._settle(rows.y[at], p[at], schedule, k)
         rows.states[at, plan.time_at[k + 1] - plan.time_at[k]] = y[:, : self._outputs]

@@ -415,8 +415,11 @@ def integrate(
             invoke(attempt, blocks + 64 * v, n)
         if group > 1:
             _share(at, slots, Control.ERROR, Control.STIFFNESS)
+        # A group may span vectors, so all of them are committed before any is looked at.
         for v in range(vectors):
-            bits = invoke(commit, blocks + 64 * v, n)
+            set_whole(at, Place.BITS, v, invoke(commit, blocks + 64 * v, n))
+        for v in range(vectors):
+            bits = whole(at, Place.BITS, v)
             if bits == 0:
                 continue
             if mode == SETTLE:

@@ -28,45 +28,47 @@ class Place(IntEnum):
     N = 2
     P = 3
     # Lanes: (V, 2 N, W), (V, P, W), (V, len(Control), W) doubles; per vector the addresses that
-    # emitted functions take; the group in each slot; addresses of the step functions.
+    # emitted functions take; the group in each slot, the lanes of each vector that need care;
+    # addresses of the step functions.
     Y = 4
     Q = 5
     CONTROL = 6
     BLOCKS = 7
     HOLDS = 8
-    STEP_CODE = 9
+    BITS = 9
+    STEP_CODE = 10
     # One more vector, for Newton's method on the first one's parameters.
-    NEWTON_Y = 10
-    NEWTON_START = 11
-    NEWTON_CONTROL = 12
-    NEWTON_BLOCKS = 13
+    NEWTON_Y = 11
+    NEWTON_START = 12
+    NEWTON_CONTROL = 13
+    NEWTON_BLOCKS = 14
     # The arrays of a Plan.
-    SEGMENT_AT = 14
-    TIME_AT = 15
-    BREAKS = 16
-    FACTOR = 17
-    SHIFT = 18
-    KEEP = 19
-    ADD = 20
-    TIMES = 21
-    ENDLESS = 22
+    SEGMENT_AT = 15
+    TIME_AT = 16
+    BREAKS = 17
+    FACTOR = 18
+    SHIFT = 19
+    KEEP = 20
+    ADD = 21
+    TIMES = 22
+    ENDLESS = 23
     # Rows: states, parameters, outputs, status and steps of each; protocol, segment, next output,
     # time, step, time at the last look at progress and largest state at the start of each group.
-    ROW_Y = 23
-    ROW_P = 24
-    STATES = 25
-    STATUS = 26
-    ROW_STEPS = 27
-    WHICH = 28
-    SEGMENT = 29
-    OUTPUT = 30
-    ROW_TIME = 31
-    ROW_STEP = 32
-    MARK = 33
-    STARTED = 34
-    GROUP = 35
-    RECORDED = 36
-    OUTPUTS = 37
+    ROW_Y = 24
+    ROW_P = 25
+    STATES = 26
+    STATUS = 27
+    ROW_STEPS = 28
+    WHICH = 29
+    SEGMENT = 30
+    OUTPUT = 31
+    ROW_TIME = 32
+    ROW_STEP = 33
+    MARK = 34
+    STARTED = 35
+    GROUP = 36
+    RECORDED = 37
+    OUTPUTS = 38
 
 
 class Rows:
@@ -146,6 +148,7 @@ class Lanes:
         self.prepared = aligned_zeros(vectors, code.prepared, width)
         self.scratch = aligned_zeros(code.scratch, width)
         self._holds = np.empty(vectors * width, dtype=np.int64)
+        self._bits = np.empty(vectors, dtype=np.int64)
         self._newton = (
             aligned_zeros(n, width),
             aligned_zeros(n, width),
@@ -163,7 +166,8 @@ class Lanes:
             vectors,
             n,
             p,
-            *addresses(self.y, self.q, self.control, self.blocks, self._holds, code.steps),
+            *addresses(self.y, self.q, self.control, self.blocks),
+            *addresses(self._holds, self._bits, code.steps),
             *addresses(*self._newton, self._newton_blocks),
         ]
 

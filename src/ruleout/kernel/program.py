@@ -129,10 +129,6 @@ class Program:
             group=group,
             max_steps=max_steps,
         )
-        if self._lowered.forced and schedule.ends_at_rest:
-            status[(schedule.plan.endless[index] == 1) & (status == Status.OK)] = (
-                Status.NO_STEADY_STATE
-            )
         return Solution(states[:, :, :n], status, steps)
 
     def steady(

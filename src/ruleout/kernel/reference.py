@@ -70,6 +70,7 @@ class ReferenceBackend:
     def __init__(self, lowered: Lowered, totals: Array, pivots: tuple[int, ...]) -> None:
         names = (*lowered.states, *lowered.parameters)
         self._n = len(lowered.states)
+        self._forced = lowered.forced
         self._rhs = Tape(lowered.rhs, names)
         self._jacobian = Tape([entry for row in lowered.jacobian for entry in row], names)
         self._totals = totals
@@ -101,7 +102,9 @@ class ReferenceBackend:
             run.integrate(rtol, atol, max_steps)
             plan = schedule.plan
             ending = np.flatnonzero((plan.endless[which] == 1) & (run.status == Status.OK))
-            if len(ending):
+            if self._forced:
+                run.status[ending] = Status.NO_STEADY_STATE
+            elif len(ending):
                 last = plan.time_at[which[ending] + 1] - plan.time_at[which[ending]]
                 y, status = self.steady(run.y[ending], run.q[ending])
                 run.states[ending, last] = y
