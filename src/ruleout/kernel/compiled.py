@@ -68,7 +68,8 @@ class CompiledBackend:
         from ruleout.kernel.driver import EXPLICIT, IMPLICIT, integrate
 
         plan = schedule.plan
-        leads = which[::group]
+        # The driver reads it behind its address, so it must not be a strided view.
+        leads = np.ascontiguousarray(which[::group])
         begin = plan.segment_at[leads]
         shape = (len(y0), schedule.outputs, self._outputs)
         started = plan.breaks[begin]

@@ -322,15 +322,34 @@ def _polish(at: int, bits: int) -> None:
 
 
 @compiled
-def _share(at: int, slots: int, first: int, last: int) -> None:
-    """Let every lane of a group have what its leader found, for control entries first..last."""
+def _share_step(at: int, slots: int) -> None:
+    """Let every lane of a group take the step that its leader found."""
     group = read_int(at, Place.GROUP)
     for slot in range(slots):
         lead = slot * group
-        for entry in range(first, last + 1):
-            value = _control(at, lead, entry)
+        step = _control(at, lead, Control.STEP)
+        for lane in range(lead + 1, lead + group):
+            _set_control(at, lane, Control.STEP, step)
+
+
+@compiled
+def _share_worst(at: int, slots: int) -> None:
+    """Let every lane of a group have its largest error, and its stiffness where any lane has it.
+
+    The leader's alone would not do: at a fixed point it has no error, and explicit steps grow until
+    the deviation of the other lanes explodes. A lane that is NaN counts only if it leads.
+    """
+    group = read_int(at, Place.GROUP)
+    for slot in range(slots):
+        lead = slot * group
+        for entry in range(Control.ERROR, Control.STIFFNESS + 1):
+            worst = _control(at, lead, entry)
             for lane in range(lead + 1, lead + group):
-                _set_control(at, lane, entry, value)
+                other = _control(at, lane, entry)
+                if other > worst:
+                    worst = other
+            for lane in range(lead, lead + group):
+                _set_control(at, lane, entry, worst)
 
 
 @compiled
@@ -340,7 +359,7 @@ def _prepare(at: int, slots: int) -> int:
     for v in range(read_int(at, Place.VECTORS)):
         invoke(whole(at, Place.STEP_CODE, _START), read_int(at, Place.BLOCKS) + 64 * v, n)
     if group > 1:
-        _share(at, slots, Control.STEP, Control.STEP)
+        _share_step(at, slots)
     bad = 0
     for slot in range(slots):
         g, lead = whole(at, Place.HOLDS, slot), slot * group
@@ -414,7 +433,7 @@ def integrate(
         for v in range(vectors):
             invoke(attempt, blocks + 64 * v, n)
         if group > 1:
-            _share(at, slots, Control.ERROR, Control.STIFFNESS)
+            _share_worst(at, slots)
         # A group may span vectors, so all of them are committed before any is looked at.
         for v in range(vectors):
             set_whole(at, Place.BITS, v, invoke(commit, blocks + 64 * v, n))
