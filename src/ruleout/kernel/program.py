@@ -94,7 +94,7 @@ class Program:
             Local error is kept below ``atol + rtol * |y|`` in every state.
         group : int
             Rows come in consecutive groups of this size; a group shares its protocol and one step
-            sequence, controlled by the error of its first row. The difference of two rows of a
+            sequence, controlled by the largest error among them. The difference of two rows of a
             group is then a smooth function of the difference of their parameters.
         max_steps : int
             Attempted steps per row, at most.
