@@ -105,12 +105,19 @@ def judge(
 
 
 @app.command()
-def inspect(case: CaseFolder, seed: Seed = 1) -> None:
+def inspect(
+    case: CaseFolder,
+    seed: Seed = 1,
+    variant: Annotated[
+        list[str] | None,
+        typer.Option(metavar="NAME", help="Show this one's equations; may be given repeatedly."),
+    ] = None,
+) -> None:
     """Show a case's variants, equations, loops and what to mend before fitting."""
     from ruleout.cli.inspecting import run_inspect
 
     with guarded():
-        run_inspect(case, seed)
+        run_inspect(case, seed, variant or [])
 
 
 @app.command()

@@ -81,7 +81,7 @@ def latex_table(judgement: Judgement) -> str:
         f"{escape(str(judgement.meta['title']))}: wirings judged against the data at "
         f"$\\alpha = {judgement.meta['alpha']:g}$. Par.: free parameters; $p$: calibrated "
         r"posterior predictive check; $\Delta$LOO: difference in expected log predictive density "
-        "(PSIS-LOO) from the best variant, with standard error. Kept means not ruled out by these data."
+        "(PSIS-LOO) from the best variant, with standard error. Kept means not ruled out."
     )
     long = len(rows) > LONG
     needs = "array, booktabs" + (", longtable" if long else "")

@@ -12,20 +12,22 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import Any, Final
 
+from ruleout.errors import InputError
+
 COLUMN: Final = 89.0
 """Width of a figure in one column of a journal, in millimetres."""
 PAGE: Final = 183.0
 MM: Final = 1 / 25.4
 
 COLOURS: Final = (
-    "#1f5fa8",
+    "#1956aa",
     "#d1622b",
-    "#3a9d8f",
-    "#7b4b94",
-    "#c79a1e",
-    "#6d7680",
-    "#b23a5e",
-    "#57a0d6",
+    "#2f9987",
+    "#451a51",
+    "#edaf2c",
+    "#65648f",
+    "#9c1f45",
+    "#7fbbe8",
 )
 MARKERS: Final = ("o", "s", "^", "D", "v", "P", "X", "*")
 VERDICT_COLOURS: Final[Mapping[str, str]] = {
@@ -84,19 +86,35 @@ def settings() -> dict[str, Any]:
     }
 
 
+def _read_style(path: Path) -> dict[str, Any]:
+    """Read a style file strictly: matplotlib itself only warns of what it cannot use."""
+    import matplotlib as mpl
+
+    try:
+        lines = path.read_text(encoding="utf-8").splitlines()
+    except (OSError, UnicodeDecodeError) as error:
+        raise InputError(f"this style file cannot be read: {error}", where=str(path)) from error
+    given: dict[str, Any] = {}
+    for number, line in enumerate(lines, 1):
+        key, _, value = line.partition(":")
+        if not key.strip() or key.lstrip().startswith("#"):
+            continue
+        try:
+            given.update(mpl.RcParams({key.strip(): value.split(" #")[0].strip()}))
+        except (KeyError, ValueError) as error:
+            reason = str(error).strip("'\"").splitlines()[0]
+            raise InputError(
+                f"not a line of a matplotlib style file: {reason}", where=f"{path}:{number}"
+            ) from error
+    return given
+
+
 @contextmanager
 def figure_style(extra: Path | None = None) -> Iterator[None]:
     """Draw with these settings, and with those of the style file ``extra`` over them."""
     import matplotlib as mpl
 
-    from ruleout.errors import InputError
-
     with mpl.rc_context(settings()):
         if extra is not None:
-            try:
-                mpl.rcParams.update(mpl.rc_params_from_file(extra, use_default_template=False))
-            except (OSError, KeyError, ValueError) as error:
-                raise InputError(
-                    f"not a matplotlib style file: {error}", where=str(extra)
-                ) from error
+            mpl.rcParams.update(_read_style(extra))
         yield

@@ -50,7 +50,7 @@
     for (const button of table.querySelectorAll("thead button")) {
       button.addEventListener("click", () => sort(button.closest("th")));
     }
-    form.addEventListener("input", filter);
+    for (const event of ["input", "change"]) form.addEventListener(event, filter);
     form.addEventListener("submit", (event) => event.preventDefault());
     form.addEventListener("reset", () => setTimeout(filter));
     filter();
