@@ -10,6 +10,8 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import null_space
 
 from ruleout.equations.laws import TINY
 from ruleout.equations.model import build
@@ -23,6 +25,9 @@ from ruleout.variants import VariantSet
 
 Form = Mapping[str, float]
 """A linear form in the unknown exponents."""
+Array = NDArray[np.float64]
+NEGLIGIBLE = 1e-9
+"""Exponents below this are rounding; true ones are ratios of small numbers."""
 
 
 def _combine(a: Form, b: Form, times: float) -> Form:
@@ -43,14 +48,16 @@ class Scaling:
     """
 
     def __init__(self, scalable: Iterable[str], nodes: Iterable[str]) -> None:
-        self.scalable = frozenset(scalable)
-        self.absolute = frozenset(nodes) - self.scalable | {"time"}
-        self.rows: list[Form] = []
+        self.scalable = tuple(scalable)
+        self.absolute = frozenset(nodes).difference(self.scalable) | {"time"}
+        self.rows: dict[frozenset[tuple[str, float]], Form] = {}
+        self._open: dict[str, Array] | None = None
 
     def demand(self, form: Form) -> None:
         """Add the equation ``form = 0``."""
         if form:
-            self.rows.append(form)
+            self.rows.setdefault(frozenset(form.items()), form)
+            self._open = None
 
     def equal(self, a: Form | None, b: Form | None) -> None:
         """Demand equal exponents; None is zero, which fits any."""
@@ -102,18 +109,31 @@ class Scaling:
         self.demand(b)
         return {}
 
-    def leaves_open(self, name: str, extra: Sequence[Form] = ()) -> bool:
-        """Return whether some rescaling that meets every demand changes ``name``."""
-        if name in self.absolute:
+    def _rescalings(self) -> dict[str, Array]:
+        """Return, for every name that occurs, its exponents in a basis of what is left open."""
+        if self._open is None:
+            rows = list(self.rows.values())
+            names = dict.fromkeys((*self.scalable, *(name for row in rows for name in row)))
+            column = {name: j for j, name in enumerate(names)}
+            matrix = np.zeros((len(rows), len(names)))
+            for i, row in enumerate(rows):
+                for name, value in row.items():
+                    matrix[i, column[name]] = value
+            self._open = dict(zip(names, null_space(matrix), strict=True))
+        return self._open
+
+    def leaves_open(self, name: str, given: str | None = None) -> bool:
+        """Return whether some rescaling that meets every demand changes ``name``.
+
+        ``given`` names one more symbol that is not to change.
+        """
+        basis = self._rescalings()
+        if name not in basis:
             return False
-        rows = [*self.rows, *extra]
-        names = {n: i for i, n in enumerate(dict.fromkeys((name, *(n for r in rows for n in r))))}
-        matrix = np.zeros((len(rows) + 1, len(names)))
-        for i, row in enumerate(rows):
-            for n, value in row.items():
-                matrix[i, names[n]] = value
-        matrix[-1, names[name]] = 1.0
-        return bool(np.linalg.matrix_rank(matrix) > np.linalg.matrix_rank(matrix[:-1]))
+        exponents = basis[name]
+        if given in basis and (held := basis[given]).any():
+            exponents = exponents - held * (exponents @ held) / (held @ held)
+        return bool(np.abs(exponents).max(initial=0.0) > NEGLIGIBLE)
 
 
 def scaling(model: Model, mechanism: Mechanism, experiments: Experiments) -> Scaling:
@@ -224,7 +244,7 @@ def unit_ties(
             if name.endswith(".basal") != basal:
                 continue
             everywhere = all(name in models[i].parameters for i in have)
-            if everywhere and not any(systems[i].leaves_open(node, [{name: 1.0}]) for i in have):
+            if everywhere and not any(systems[i].leaves_open(node, name) for i in have):
                 for i in have:
                     systems[i].demand({name: 1.0})
                 ties[name] = f"{node}.loss_rate"
