@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from ruleout.case import Case
+from ruleout.kernel import set_threads
 from ruleout.pipeline.assemble import assemble, save_fits
 from ruleout.pipeline.flow import Flow
 from ruleout.pipeline.settings import EFFORTS, Effort, Settings
@@ -86,12 +87,14 @@ def _local_executor(workers: int) -> Executor:
     if workers == 1:
         return ThreadPoolExecutor(1, thread_name_prefix="ruleout")
     return ProcessPoolExecutor(
-        workers, mp_context=get_context("spawn"), initializer=_leave_interrupts_to_the_parent
+        workers, mp_context=get_context("spawn"), initializer=_begin_worker
     )
 
 
-def _leave_interrupts_to_the_parent() -> None:
+def _begin_worker() -> None:
+    """Leave interrupts to the parent, and the other cores to the other workers."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    set_threads(1)
 
 
 def _stop(executor: Executor) -> None:

@@ -55,23 +55,21 @@ def _stacked(results: Results, table: str) -> pd.DataFrame:
 
 def _loo(results: Results) -> dict[str, tuple[float, float, bool]]:
     """Return difference to the best in expected log density, its error, and whether it is sound."""
-    from ruleout.fitting.convergence import leave_one_out
-
     considered = kept(results) or list(results.order)
-    found = {}
-    for name in considered:
-        if name in results.likelihoods:
-            loglik = results.likelihoods[name]["log_likelihood"]
-            if np.isfinite(loglik).all() and loglik.shape[-1] > 1:
-                found[name] = leave_one_out(loglik)
+    found = {
+        n: results.likelihoods[n]
+        for n in considered
+        if n in results.likelihoods and np.isfinite(results.likelihoods[n]["elpd"])
+    }
     if not found:
         return {}
-    best = max(found, key=lambda n: found[n][0])
+    best = max(found, key=lambda n: float(found[n]["elpd"]))
     out = {}
-    for name, (elpd, _, pointwise, k) in found.items():
-        gap = pointwise - found[best][2]
+    for name, terms in found.items():
+        gap = terms["pointwise"] - found[best]["pointwise"]
+        difference = float(terms["elpd"] - found[best]["elpd"])
         error = float(np.sqrt(len(gap) * np.var(gap)))
-        out[name] = (elpd - found[best][0], error, bool(np.all(k < 0.7)))
+        out[name] = (difference, error, bool(np.all(terms["pareto_k"] < 0.7)))
     return out
 
 
@@ -217,7 +215,8 @@ def _replicate_rows(results: Results, name: str) -> list[dict[str, Any]]:
 
 
 def _finding_rows(results: Results) -> list[dict[str, Any]]:
-    return [
+    before = pd.DataFrame(dict(results.findings)).to_dict("records")
+    return [{str(k): v for k, v in row.items()} for row in before] + [
         {
             "variant": larger,
             "kind": "nesting",

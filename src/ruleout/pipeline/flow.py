@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ruleout import __version__
 from ruleout.case import Case
 from ruleout.checks import Column, Tally, maximum, standardise, standardised, tally
 from ruleout.fitting.convergence import Convergence, diagnose
@@ -123,8 +124,9 @@ class Flow:
         self.executor = executor
         self.progress = progress
         self.bench: Workbench = tasks.bench_of(case)
+        self.whole = digest(__version__, sorted(case.hashes.items()), settings.seed)
         self._data = digest(
-            sorted((name, sha) for name, sha in case.hashes.items() if name == "data.csv"),
+            case.hashes.get("data.csv", ""),
             case.experiments.readouts,
             case.experiments.conditions,
         )
@@ -148,8 +150,6 @@ class Flow:
 
     def fingerprint(self, name: str) -> str:
         """Return the digest of all that a variant's fit depends on."""
-        from ruleout import __version__
-
         posterior = self.bench.posterior(name)
         return digest(
             __version__,

@@ -48,8 +48,8 @@ EFFORTS: Final[Mapping[str, Effort]] = MappingProxyType(
     {
         "quick": Effort(
             search=SearchEffort(screened=256),
-            stored=100,
-            most_blocks=10,
+            stored=60,
+            most_blocks=16,
             rhat=1.03,
             ess=200.0,
             most_replicates=999,

@@ -12,6 +12,7 @@ from functools import cached_property
 from typing import Any
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from ruleout.case import Case
@@ -223,21 +224,45 @@ def summarise_fit(
     )
     out: Arrays = {}
     for table in ("curves", "residuals", "parameters", "quantiles"):
-        frame = getattr(summary, table)
-        for column in frame.columns:
-            values = frame[column].to_numpy()
-            out[f"{table}/{column}"] = values.astype(str) if values.dtype == object else values
+        out |= _columns(getattr(summary, table), f"{table}/")
     return out
 
 
-def log_likelihood(bench: Workbench, name: str, draws: NDArray[np.float64]) -> Arrays:
-    """Return pointwise log likelihood and prediction of (E, S, D) draws at the fitted points."""
+def _columns(table: pd.DataFrame, prefix: str = "") -> Arrays:
+    """Return a table's columns as arrays that can be stored without pickling."""
+    columns = {name: table[name].to_numpy() for name in table.columns}
+    return {
+        f"{prefix}{name}": values.astype(str) if values.dtype.kind in "OTU" else values
+        for name, values in columns.items()
+    }
+
+
+def inspect(bench: Workbench, seed: int) -> Arrays:
+    """Return the findings before fitting, column by column."""
+    from ruleout.inspection import inspect_case
+
+    return _columns(inspect_case(bench.case, seed).findings)
+
+
+def likelihood(bench: Workbench, name: str, draws: NDArray[np.float64], kept: int) -> Arrays:
+    """Return leave-one-out accuracy from (E, S, D) draws, and the first ``kept`` draws' terms."""
+    from ruleout.fitting.convergence import leave_one_out
+
     posterior = bench.posterior(name)
     flat = draws.reshape(-1, draws.shape[-1])
     zeta, _ = posterior.zeta(flat, 1e-5)
     loglik = posterior.noise.loglik(flat, zeta, posterior.observed)[:, posterior.fitted]
     shape = draws.shape[:2]
+    terms = loglik.reshape(*shape, -1)
+    usable = np.isfinite(terms).all() and terms.shape[-1] > 1
+    elpd, _, pointwise, k = (
+        leave_one_out(terms) if usable else (np.nan, np.nan, np.zeros(0), np.zeros(0))
+    )
     return {
-        "log_likelihood": loglik.reshape(*shape, -1),
-        "prediction": zeta.reshape(*shape, -1),
+        "elpd": np.array(elpd),
+        "pointwise": pointwise,
+        "pareto_k": k,
+        "draws": draws[:, :kept],
+        "log_likelihood": terms[:, :kept],
+        "prediction": zeta.reshape(*shape, -1)[:, :kept],
     }

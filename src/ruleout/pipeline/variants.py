@@ -18,6 +18,8 @@ from ruleout.verdicts import KEPT, ClaimVerdict, Own, Verdict, judge_claim, sett
 REACHABLE_SHARE = 0.025
 """No-effect counts as reachable in at least this share of the larger variant's own prior."""
 FAILED_REPLICATES = 0.05
+LOO_DRAWS, SAVED_DRAWS = 1000, 250
+"""Draws per ensemble for leave-one-out, and in the fit's file."""
 MATCH_OBJECTIVE = 1.0
 """Only variants whose objectives differ by less are compared curve by curve."""
 
@@ -47,6 +49,7 @@ class Results:
     claims: tuple[ClaimVerdict, ...]
     summaries: dict[str, Arrays]
     likelihoods: dict[str, Arrays]
+    findings: Arrays
 
 
 async def judge_variants(flow: Flow) -> Results:
@@ -90,6 +93,9 @@ async def judge_variants(flow: Flow) -> Results:
         return kept or by_coherence
 
     async with asyncio.TaskGroup() as group:
+        looking = group.create_task(
+            flow.piece("inspection", flow.whole, tasks.inspect, flow.settings.seed)
+        )
         for name in order:
             fits[name] = group.create_task(flow.fit(name))
         for name in order:
@@ -113,6 +119,7 @@ async def judge_variants(flow: Flow) -> Results:
         claims,
         summaries,
         likelihoods,
+        looking.result(),
     )
 
 
@@ -201,12 +208,15 @@ async def _summary(flow: Flow, name: str, fit: Fit) -> Arrays:
 async def _likelihood(flow: Flow, name: str, fit: Fit) -> Arrays:
     e, s, w, d = fit.chains.shape
     flat = fit.chains.reshape(e, s * w, d)
-    each = np.linspace(0, s * w - 1, min(250, s * w)).astype(int)
-    thinned = flat[:, each]
-    found = await flow.piece(
-        f"{name}/likelihood", flow.fingerprint(name), tasks.log_likelihood, name, thinned
+    each = np.random.default_rng(0).permutation(s * w)[:LOO_DRAWS]
+    return await flow.piece(
+        f"{name}/likelihood",
+        flow.fingerprint(name),
+        tasks.likelihood,
+        name,
+        flat[:, each],
+        SAVED_DRAWS,
     )
-    return {**found, "draws": thinned}
 
 
 def kept(results: Results) -> list[str]:
