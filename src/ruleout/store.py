@@ -180,9 +180,7 @@ def _write_bytes(path: Path, content: bytes) -> None:
 
 def _records(table: pd.DataFrame) -> list[dict[str, Any]]:
     """Return the rows with NaN as null and infinities as text, which JSON cannot hold."""
-    return [
-        {key: _plain(value) for key, value in row.items()} for row in table.to_dict("records")
-    ]
+    return [{key: _plain(value) for key, value in row.items()} for row in table.to_dict("records")]
 
 
 def _plain(value: Any) -> Any:
@@ -216,9 +214,9 @@ def load_judgement(folder: Path) -> tuple[Judgement, Case]:
             header = pd.read_csv(folder / f"{name}.csv", nrows=0).columns
             table = pd.read_csv(
                 folder / f"{name}.csv",
-                dtype={c: str for c in header if c in text and not _is_index(name, c)},
+                dtype={c: str for c in header if c in text and not _is_number(name, c)},
                 keep_default_na=False,
-                na_values={c: [""] for c in header if c not in text},
+                na_values={c: [""] for c in header if c not in text or _is_number(name, c)},
             )
             tables[name] = table
     except (OSError, ValueError, KeyError) as error:
@@ -232,5 +230,6 @@ def load_judgement(folder: Path) -> tuple[Judgement, Case]:
     return judgement, read_case(folder / "case")
 
 
-def _is_index(table: str, column: str) -> bool:
-    return table == "replicates" and column == "replicate"
+def _is_number(table: str, column: str) -> bool:
+    """Whether a column that elsewhere holds text holds numbers in this table."""
+    return (table, column) in (("replicates", "replicate"), ("quantiles", "prior"))

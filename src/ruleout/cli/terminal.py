@@ -68,7 +68,8 @@ def print_claims(console: Console, claims: pd.DataFrame) -> None:
         line.append(words.upper(), style=STYLES.get(row["verdict"], ""))
         line.append(f"  {row['claim']}")
         console.print(line, soft_wrap=True)
-        print_wrapped(console, row["statement"], indent="    ")
+        text = row["text"].rstrip(".")
+        print_wrapped(console, f"{text}. {row['statement']}" if text else row["statement"], "    ")
 
 
 def print_variants(console: Console, variants: pd.DataFrame) -> None:

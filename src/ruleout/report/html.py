@@ -60,6 +60,13 @@ def _breakable(names: list[str]) -> Markup:
     return Markup(", ").join(Markup("_<wbr>").join(name.split("_")) for name in names)
 
 
+def _prose(text: str) -> Markup:
+    """Return a sentence with what stands between backticks as code."""
+    parts = str(text).split("`")
+    marked = [Markup("<code>{}</code>").format(p) if i % 2 else p for i, p in enumerate(parts)]
+    return Markup("").join(marked)
+
+
 @cache
 def environment() -> Environment:
     """Return the template environment: everything is escaped unless it was drawn here."""
@@ -79,6 +86,7 @@ def environment() -> Environment:
         check=check_words,
         missing=pd.isna,
         breakable=_breakable,
+        prose=_prose,
     )
     made.globals.update(
         verdict_words=VERDICTS,
@@ -139,12 +147,34 @@ def html_report(judgement: Judgement, case: Case) -> str:
         evidence=evidence,
         left_out=left_out,
         findings=_findings(judgement, ""),
+        settings=_settings(judgement.meta),
         abbreviated=_abbreviated(small),
         held_out=[r for r in rows if not pd.isna(r["held_out_p"])],
         kept_means=KEPT_MEANS,
         caution=DOSING_CAUTION if looks_like_dosing(case.experiments) else "",
         counts={v: int((judgement.variants["verdict"] == v).sum()) for v in VERDICTS},
     )
+
+
+_SETTINGS: Final[Mapping[str, str]] = {
+    "starts": "Starts of each search, at least",
+    "rhat": "Largest R-hat accepted",
+    "ess": "Smallest effective sample size accepted",
+    "least_replicates": "Replicates before a small p is final",
+    "most_replicates": "Replicates at most",
+}
+
+
+def _settings(meta: Mapping[str, Any]) -> list[tuple[str, Any]]:
+    """Return what identifies the run and how it was made, with labels."""
+    return [
+        ("Seed", meta["seed"]),
+        ("Effort", meta["effort"]),
+        ("Level α", meta["alpha"]),
+        *((_SETTINGS.get(key, key), value) for key, value in meta["settings"].items()),
+        *meta["versions"].items(),
+        *((f"{name}, SHA-256", value) for name, value in meta["inputs"].items()),
+    ]
 
 
 def _graph_label(edges: str) -> str:
@@ -227,7 +257,10 @@ def _fits(
 
 
 def _checks(checks: pd.DataFrame, replicates: pd.DataFrame, alpha: float) -> list[dict[str, Any]]:
-    """Return the checks, those that count first, with their charts."""
+    """Return the checks with their charts: those that count, then those that explain.
+
+    ``first`` are those to be seen at once: they count or fail.
+    """
     rows = []
     for row in checks.sort_values("counts_for_verdict", ascending=False, kind="stable").to_dict(
         "records"
@@ -236,7 +269,9 @@ def _checks(checks: pd.DataFrame, replicates: pd.DataFrame, alpha: float) -> lis
         draws = replicates["value"][replicates["check"] == row["check"]].to_numpy(float)
         fails = bool(row["p_value"] <= alpha)
         chart = check_chart(row, draws if counts else draws[:0], fails)
-        rows.append({**row, "counts": counts, "fails": fails, "chart": chart})
+        rows.append(
+            {**row, "counts": counts, "fails": fails, "first": counts or fails, "chart": chart}
+        )
     return rows
 
 

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
+from ruleout.report.words import FAILURES
 from ruleout.verdicts.types import Judgement
 
 STEADY = ""
@@ -27,7 +28,7 @@ class Panel:
     points : DataFrame
         Rows of ``Judgement.residuals``.
     fails : tuple of str
-        Checks that fail here, the decisive one or those that explain it.
+        What fails here by the decisive check or those that explain it, in words.
     held_out : bool
     """
 
@@ -71,12 +72,13 @@ def panels_of(judgement: Judgement, variant: str) -> list[Panel]:
                 fails = failed[failed["condition"] == condition]
             if len(s):
                 held = bool(s["held_out"].astype(bool).all())
-                panels.append(Panel(condition, readout, c, s, _kinds(fails["check"]), held))
+                panels.append(Panel(condition, readout, c, s, _failures(fails["check"]), held))
     return panels
 
 
-def _kinds(checks: Sequence[str]) -> tuple[str, ...]:
-    return tuple(dict.fromkeys(check.split(":")[0] for check in checks))
+def _failures(checks: Sequence[str]) -> tuple[str, ...]:
+    kinds = dict.fromkeys(check.split(":")[0] for check in checks)
+    return tuple(FAILURES.get(kind, kind) for kind in kinds)
 
 
 def value_range(panels: Sequence[Panel]) -> tuple[float, float]:

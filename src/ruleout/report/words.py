@@ -26,6 +26,27 @@ CLAIM_VERDICTS: Final[Mapping[str, str]] = {
     "nothing_fits": "nothing fits",
 }
 
+CHECKS: Final[Mapping[str, str]] = {
+    "misfit": "size of the residuals",
+    "serial": "runs in the residuals",
+    "peak": "error in the height of the peak",
+    "final": "error at the end",
+    "above": "how far data lie above the fit",
+    "below": "how far data lie below the fit",
+    "held_out": "misfit of the held-out data",
+}
+"""What each kind of check looks at."""
+
+FAILURES: Final[Mapping[str, str]] = {
+    "misfit": "size",
+    "serial": "runs",
+    "peak": "peak",
+    "final": "end",
+    "above": "fit too low",
+    "below": "fit too high",
+}
+"""A word or two for a check that fails in a panel."""
+
 KEPT_MEANS: Final = (
     "'Kept' means not ruled out by these data. It does not mean proven: another experiment may "
     "still rule it out, and mechanisms that were not on the list were not judged."
@@ -87,8 +108,7 @@ def check_words(check: str) -> str:
     """
     kind, _, rest = check.partition(":")
     if kind == "edge":
-        return f"letting {rest.replace('+', ' and ')} in"
+        return f"gain of fit by letting {rest.replace('+', ' and ')} in"
     condition, _, readout = rest.partition(":")
     where = f" of {readout} in {condition}" if readout else ""
-    names = {"serial": "runs in the residuals", "misfit": "size of the residuals"}
-    return names.get(kind, kind) + where
+    return CHECKS.get(kind, kind) + where
