@@ -1,8 +1,9 @@
-"""Do the states stay bounded, settle, and settle stably, under the priors?"""
+"""Whether states stay bounded, settle, and settle stably, under the priors."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import dataclass
 from math import inf
 
 import numpy as np
@@ -20,12 +21,19 @@ from ruleout.kernel.lowering import lower
 Array = NDArray[np.float64]
 HORIZONS = (1.0, 2.0, 10.0, 40.0)
 """Multiples of the last time at which growth is looked at."""
+WITHIN = (0.8, 0.82, 0.85, 0.87, 0.9, 0.93, 0.97, 1.0)
+"""Parts of each horizon whose largest level counts, so that an oscillation is not taken for growth;
+unevenly spaced, so that none keeps in step with them."""
 GROWING = 0.66
 """d ln x / d ln t above which a state that never settles counts as growing without bound: half way
 between the slowest default relaxation (0.32 over the last two horizons) and linear growth (1)."""
 REPORTED = 0.02
 """Share of prior draws from which on trouble is worth a finding."""
 UNSETTLED = 0.1
+"""The same for never settling, which a time course may well do."""
+NEGATIVE, SMALLEST = 1e-3, 1.0
+"""A level this far below zero, as a share of the node's size (at least the second), is no rounding
+error."""
 SCATTERED = 6
 """Starts, beside zero, from which other rest states are looked for."""
 
@@ -53,68 +61,88 @@ def _failures(probe: Probe, q: Array) -> Iterator[Finding]:
             )
 
 
-def _growth(probe: Probe, q: Array) -> Iterator[Finding]:
-    """Yield findings on unbounded, negative and never settling states."""
+@dataclass(frozen=True, slots=True)
+class _LongRun:
+    """Shares of prior draws in which a node grows or falls below zero, or a condition is restless.
+
+    ``unbounded`` and ``negative`` are by node, ``unsettled`` by condition.
+    """
+
+    unbounded: dict[str, float]
+    negative: dict[str, float]
+    unsettled: dict[str, float]
+
+
+def _long_run(probe: Probe, q: Array) -> _LongRun:
+    """Follow every condition well beyond the last time."""
+    found = _LongRun({}, {}, {})
     nodes = [name for name in probe.model.states if ":" not in name]
     if not nodes or "time" in symbols(*probe.model.rhs):
-        return
+        return found
+    horizons = np.array(HORIZONS) * probe.last
+    samples = tuple(np.outer(horizons, WITHIN).ravel().tolist())
     conditions = probe.experiments.conditions
-    horizons = tuple(h * probe.last for h in HORIZONS)
-    settling, forced = {}, {}
-    for name in probe.conditions:
-        # Under an interpolated input the equations depend on time: no steady state is looked for.
-        sloped = any(course.interpolated for course in conditions[name].inputs.values())
-        (forced if sloped else settling)[name] = horizons if sloped else (*horizons, inf)
-    unbounded: dict[str, float] = {}
-    negative: dict[str, float] = {}
-    unsettled: dict[str, float] = {}
-    for times in (settling, forced):
-        if not times:
+    # Under an interpolated input the equations depend on time: no steady state is looked for.
+    forced = [
+        name
+        for name in probe.conditions
+        if any(course.interpolated for course in conditions[name].inputs.values())
+    ]
+    settling = [name for name in probe.conditions if name not in forced]
+    for group, times in ((settling, (*samples, inf)), (forced, samples)):
+        if not group:
             continue
-        found, status = probe.levels(nodes, times)(q, 1e-4)
-        count = len(next(iter(times.values())))
-        levels = found.reshape(len(q), len(times), len(nodes), count)
-        slope = _last_slope(levels[..., : len(horizons)], np.array(horizons))
-        settled = np.isfinite(levels[..., -1]).all(axis=2)
-        solved = np.isfinite(levels[..., len(horizons) - 1]).all(axis=2)
-        moving = solved | (status == Status.BLOW_UP)[:, None]
-        if times is settling:
+        readings, status = probe.levels(nodes, dict.fromkeys(group, times))(q)
+        levels = readings.reshape(len(q), len(group), len(nodes), len(times))
+        solved = np.isfinite(levels[..., len(samples) - 1]).all(axis=2)
+        moving = solved | (status == int(Status.BLOW_UP))[:, None]
+        if times[-1] == inf:
+            settled = np.isfinite(levels[..., -1]).all(axis=2)
             moving &= ~settled
-            for i, name in enumerate(times):
-                unsettled[name] = float(np.mean(solved[:, i] & ~settled[:, i]))
-        grows = moving[:, :, None] & (slope > GROWING)
-        below = np.nanmin(levels, axis=3, initial=0.0) < -1e-3 * np.nanmax(
-            np.abs(levels), axis=3, initial=1e-3
-        )
+            restless = (solved & ~settled).mean(axis=0)
+            found.unsettled.update(zip(group, restless.tolist(), strict=True))
+        shape = (*levels.shape[:3], len(horizons), len(WITHIN))
+        largest = np.fmax.reduce(levels[..., : len(samples)].reshape(shape), axis=4)
+        slope = _last_slope(largest, horizons)
+        grows = (moving[:, :, None] & (slope > GROWING)).any(axis=1).mean(axis=0)
+        lowest = np.nanmin(levels, axis=3, initial=0.0)
+        size = np.nanmax(np.abs(levels), axis=3, initial=SMALLEST)
+        below = (lowest < -NEGATIVE * size).any(axis=1).mean(axis=0)
         for j, node in enumerate(nodes):
-            unbounded[node] = max(unbounded.get(node, 0.0), float(grows[:, :, j].any(1).mean()))
-            negative[node] = max(negative.get(node, 0.0), float(below[:, :, j].any(1).mean()))
-    growing = [node for node, share in unbounded.items() if share >= REPORTED]
+            found.unbounded[node] = max(found.unbounded.get(node, 0.0), float(grows[j]))
+            found.negative[node] = max(found.negative.get(node, 0.0), float(below[j]))
+    return found
+
+
+def _growth(probe: Probe, q: Array) -> Iterator[Finding]:
+    """Yield findings on unbounded, negative and never settling states."""
+    name, found = probe.variant.name, _long_run(probe, q)
+    growing = [node for node, share in found.unbounded.items() if share >= REPORTED]
     if growing:
-        share = share_words(max(unbounded.values()))
         yield Finding(
-            probe.variant.name,
+            name,
             "unbounded",
             listed(growing),
-            f"In {share} prior draws {listed(growing)} {verb(growing, 'grow')} without bound (up to "
-            f"{HORIZONS[-1]:.0f} times the last time); living systems saturate.",
+            f"In {share_words(max(found.unbounded.values()))} prior draws {listed(growing)} "
+            f"{verb(growing, 'grow')} without bound (followed to {HORIZONS[-1]:.0f} times the last "
+            "time); living systems saturate.",
             "Give what feeds it a saturating or Hill law, give it a loss, or narrow the priors.",
         )
-    falling = [node for node, share in negative.items() if share >= REPORTED]
+    falling = [node for node, share in found.negative.items() if share >= REPORTED]
     if falling:
         yield Finding(
-            probe.variant.name,
+            name,
             "negative",
             listed(falling),
-            f"In {share_words(max(negative.values()))} prior draws {listed(falling)} {verb(falling, 'fall')} below zero; "
-            "amounts cannot.",
+            f"In {share_words(max(found.negative.values()))} prior draws {listed(falling)} "
+            f"{verb(falling, 'fall')} below zero; amounts cannot.",
             "Let every rate that takes from it vanish when it is used up.",
         )
-    restless = [name for name, share in unsettled.items() if share >= UNSETTLED]
+    restless = [c for c, share in found.unsettled.items() if share >= UNSETTLED]
     if restless and not growing:
-        share = share_words(max(unsettled[name] for name in restless))
+        share = share_words(max(found.unsettled[c] for c in restless))
         yield Finding(
-            probe.variant.name,
+            name,
             "no steady state",
             listed(restless),
             f"In {share} prior draws no steady state is reached after the last change in "
@@ -124,7 +152,7 @@ def _growth(probe: Probe, q: Array) -> Iterator[Finding]:
 
 
 def _last_slope(levels: Array, times: Array) -> Array:
-    """Return d ln x / d ln t between the last two outputs reached, -inf if unknown."""
+    """Return d ln x / d ln t between the last two horizons reached, -inf if unknown."""
     last = np.full(levels.shape[:-1], -np.inf)
     with np.errstate(all="ignore"):
         logs = np.log(levels)
@@ -136,7 +164,7 @@ def _last_slope(levels: Array, times: Array) -> Array:
 
 def _rests(probe: Probe, q: Array, rng: np.random.Generator) -> Iterator[Finding]:
     """Yield findings on the state reached from zero under the resting inputs."""
-    wanted = {name: (0.0,) for name in probe.conditions}
+    wanted = dict.fromkeys(probe.conditions, (0.0,))
     prepared = setups(probe.model, probe.experiments, wanted)
     missing: dict[str, float] = {}
     unstable: dict[str, float] = {}
@@ -215,13 +243,14 @@ def _rest_shares(
 
 def _rest_parameters(probe: Probe, setup: Setup, system: System, q: Array) -> Array:
     """Return (B, P) parameters in force at rest."""
-    values = probe.catalogue.values(q)
+    values: Array = probe.catalogue.values(q)
     columns = probe.catalogue.columns
     p = np.zeros((len(q), len(system.parameters)))
     for j, name in enumerate(system.parameters):
         if ":" not in name:
             p[:, j] = values[:, columns[name]]
-    p = p * np.array(setup.rest_factor) + np.array(setup.rest_shift)
+    p *= np.array(setup.rest_factor)
+    p += np.array(setup.rest_shift)
     for j, name in enumerate(system.parameters):
         value = None
         if name.startswith("start:"):

@@ -89,27 +89,31 @@ def _measured(experiments: Experiments) -> list[Condition]:
 
 
 def _unperturbed(variants: VariantSet, experiments: Experiments) -> Iterator[Finding]:
-    """Yield a finding for every contested edge that no fitted condition acts on."""
+    """Yield a finding on the contested edges that no fitted condition acts on."""
     mechanism = variants.mechanism
     acted_on = frozenset().union(*(touched(c, mechanism.nodes) for c in _measured(experiments)))
+    alone: dict[str, list[str]] = {}
     for contest in variants.contests:
         name = contest.name
         if name not in mechanism.edges or name in variants.out_of_reach:
             continue
-        sources: set[str] = set()
+        sources: dict[str, int] = {}
         for variant in variants.variants.values():
             if name in variant.wiring.edges:
-                sources |= drivers(variant.wiring.edges[name], variant.wiring).keys()
+                sources |= drivers(variant.wiring.edges[name], variant.wiring)
         if sources and acted_on.isdisjoint({name, *sources}):
-            source = listed(sorted(sources))
-            yield Finding(
-                "",
-                "not perturbed",
-                name,
-                f"No condition acts on {name} or its source {source} (no input, removal, clamp, "
-                "cut, dose, start or change): the data speak of correlation alone.",
-                f"Add a condition that removes, clamps or doses {source}, or cuts {name}.",
-            )
+            alone[name] = list(sources)
+    if alone:
+        origins = listed([f"{edge} (from {listed(sources)})" for edge, sources in alone.items()])
+        nodes = listed(list(dict.fromkeys(n for sources in alone.values() for n in sources)))
+        yield Finding(
+            "",
+            "not perturbed",
+            ", ".join(alone),
+            "No condition acts on a contested edge itself or on where it comes from, so that the "
+            f"data speak of correlation alone: {origins}.",
+            f"Add conditions that remove, clamp, dose or change {nodes}, or that cut the edge.",
+        )
 
 
 def parameter_findings(probe: Probe) -> Iterator[Finding]:
@@ -145,8 +149,8 @@ def _own_names(probe: Probe) -> Iterator[Finding]:
             probe.variant.name,
             "default prior",
             ", ".join(names),
-            f"{listed(names)} {verb(names, 'stand')} in a rate expression, whose unit nothing tells, "
-            f"under a default prior ({describe_prior(own[0].prior)}).",
+            f"{listed(names)} {verb(names, 'stand')} in a rate expression, where nothing tells the "
+            f"unit, under a default prior ({describe_prior(own[0].prior)}).",
             "Give every such parameter a prior of its own under [prior].",
         )
 

@@ -1,4 +1,4 @@
-"""Do the priors reach the data?"""
+"""Whether what the priors predict reaches the data."""
 
 from __future__ import annotations
 

@@ -29,7 +29,7 @@ from ruleout.variants import VariantSet, expand
 Array = NDArray[np.float64]
 ALL_DRAWS, FEWEST_DRAWS, MOST_DRAWS = 6_000, 24, 200
 """Prior draws over all variants, and per variant at least and at most."""
-ALL_POINTS, FEWEST_POINTS, MOST_POINTS = 256, 3, 9
+ALL_POINTS, FEWEST_POINTS, MOST_POINTS = 512, 5, 25
 """Points at which sensitivities are taken, likewise."""
 MOST_PAIRS = 40
 """Pairs of variants that are matched against each other."""
@@ -96,8 +96,6 @@ def _share(total: int, variants: int, least: int, most: int) -> int:
 def _look(probe: Probe, variants: int, seed: int) -> _Look:
     name = probe.variant.name
     findings: list[Finding] = []
-    if len(probe.points):
-        findings += parameter_findings(probe)
     q = probe.draws(
         _share(ALL_DRAWS, variants, FEWEST_DRAWS, MOST_DRAWS),
         generator(seed, name, "inspection draws"),
@@ -108,6 +106,7 @@ def _look(probe: Probe, variants: int, seed: int) -> _Look:
     rank = find_rank(found)
     foresight = None
     if len(probe.points):
+        findings += parameter_findings(probe)
         findings += behaviour_findings(probe, q, generator(seed, name, "inspection starts"))
         findings += sensitivity_findings(probe, found, rank)
         foresight = foresee(probe, q, generator(seed, name, "inspection noise"))
@@ -144,23 +143,25 @@ def _choice_findings(
 ) -> Iterator[Finding]:
     """Yield a finding for every choice that variants without it can imitate."""
     for choice, pairs in choice_pairs(variants.neighbours, MOST_PAIRS).items():
-        imitated = []
-        for without, having in pairs:
-            q = probes[having].draws(MATCHING_DRAWS, generator(seed, having, "imitation"))
-            if can_imitate(probes[without], probes[having], q):
-                imitated.append((without, having))
+        imitated = [
+            having
+            for without, having in pairs
+            if can_imitate(
+                probes[without],
+                probes[having],
+                probes[having].draws(MATCHING_DRAWS, generator(seed, having, "imitation")),
+            )
+        ]
         everywhere = len(imitated) == len(pairs)
-        for without, having in imitated:
+        for name in dict.fromkeys("" if everywhere else having for having in imitated):
             yield Finding(
-                "" if everywhere else having,
+                name,
                 "indistinguishable",
                 choice,
-                f"What {choice} does to these readouts can be had without it: its presence "
-                "cannot be settled by them.",
+                f"Where {choice} matters under the priors, a variant without it can draw the same "
+                "curves: these readouts hardly tell whether it is there.",
                 "Measure another node, or perturb its source; changed rates make up for it here.",
             )
-            if everywhere:
-                break
 
 
 def _merged(findings: Sequence[Finding], names: tuple[str, ...]) -> list[Finding]:
