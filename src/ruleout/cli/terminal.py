@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any, Final
 from rich.console import Console
 from rich.text import Text
 
+from ruleout.report.tables import records
 from ruleout.report.words import (
     CLAIM_VERDICTS,
     KEPT_MEANS,
@@ -62,7 +63,7 @@ def print_heading(console: Console, text: str) -> None:
 
 def print_claims(console: Console, claims: pd.DataFrame) -> None:
     """Print each claim's verdict and sentence."""
-    for row in claims.to_dict("records"):
+    for row in records(claims):
         words = CLAIM_VERDICTS[row["verdict"]]
         line = Text()
         line.append(words.upper(), style=STYLES.get(row["verdict"], ""))
@@ -78,7 +79,7 @@ def print_variants(console: Console, variants: pd.DataFrame) -> None:
     head = f"{'variant':<{name_width}}  {'verdict':<10}  {'p':>7}  {'free':>4}  contested, present"
     console.print(Text(head, style="bold"), soft_wrap=True)
     left = REASONS_SHOWN
-    for row in by_verdict(variants).to_dict("records"):
+    for row in records(by_verdict(variants)):
         ruled_out = row["verdict"] == "ruled_out"
         if ruled_out and left == 0:
             break

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from ruleout.report.panels import STEADY, Panel
 from ruleout.report.style import COLOURS
 from ruleout.report.svg import MARKER_PATHS, polyline, short, ticks
+from ruleout.report.tables import records
 from ruleout.report.words import number_text
 
 Array = NDArray[np.float64]
@@ -126,10 +127,10 @@ def _points(
 ) -> str:
     css = _css_colour(colour)
     marks = []
-    for at, row in zip(x_values, points.itertuples(), strict=True):
-        hollow = " hollow" if bool(row.held_out) or bool(row.censored) else ""
-        where = f"translate({short(float(x(at)))} {short(float(y(row.value)))})"
-        text = f"time {row.time:g}: {row.value:.4g}, fitted {row.fitted:.4g}"
+    for at, row in zip(x_values, records(points), strict=True):
+        hollow = " hollow" if row["held_out"] or row["censored"] else ""
+        where = f"translate({short(float(x(at)))} {short(float(y(row['value'])))})"
+        text = f"time {row['time']:g}: {row['value']:.4g}, fitted {row['fitted']:.4g}"
         marks.append(
             f'<path class="point {css}{hollow}" d="{MARKER_PATHS[marker]}" transform="{where}">'
             f"<title>{text}</title></path>"
@@ -149,8 +150,8 @@ def _steady_marks(
     for i, name in enumerate(names):
         colour, marker = styles[name]
         css, centre = _css_colour(colour), float(x(i))
-        for row in panel.curves[panel.curves["condition"] == name].itertuples():
-            low, high, best = (float(y(v)) for v in (row.low, row.high, row.best))
+        for row in records(panel.curves[panel.curves["condition"] == name]):
+            low, high, best = (float(y(row[k])) for k in ("low", "high", "best"))
             corners = [
                 (centre - half, low),
                 (centre + half, low),

@@ -19,6 +19,7 @@ from ruleout.report.style import (
     VERDICT_SIGNS,
     condition_styles,
 )
+from ruleout.report.tables import variant_row
 from ruleout.report.words import VERDICTS, check_words, p_text
 from ruleout.verdicts.types import Judgement
 
@@ -79,7 +80,7 @@ def fit_figure(judgement: Judgement, variant: str) -> Figure:
 
 
 def _title(judgement: Judgement, variant: str) -> str:
-    row = judgement.variants.set_index("variant").loc[variant]
+    row = variant_row(judgement, variant)
     p = f", p = {p_text(row['p_value'])}" if row["verdict"] != "not_judged" else ""
     why = f", decided by: {check_words(row['decisive_check'])}" if row["decisive_check"] else ""
     return f"{variant}: {VERDICTS[row['verdict']]}{p}{why}"
@@ -197,12 +198,12 @@ def checks_figure(judgement: Judgement, variants: Sequence[str]) -> Figure | Non
 def _telling_check(judgement: Judgement, variant: str) -> str:
     """Return the decisive check, else the counting one with the smallest p, that has replicates."""
     drawn = set(judgement.replicates["check"][judgement.replicates["variant"] == variant])
-    row = judgement.variants.set_index("variant").loc[variant]
+    row = variant_row(judgement, variant)
     if row["decisive_check"] in drawn:
         return str(row["decisive_check"])
     checks = judgement.checks
     mine = checks[(checks["variant"] == variant) & checks["check"].isin(drawn)]
-    return "" if mine.empty else str(mine.loc[mine["p_value"].idxmin(), "check"])
+    return "" if mine.empty else str(mine["check"].iloc[int(mine["p_value"].argmin())])
 
 
 def _draw_check(axes: Axes, judgement: Judgement, variant: str, check: str, verdict: str) -> None:

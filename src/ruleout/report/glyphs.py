@@ -96,11 +96,11 @@ def outline(kind: NodeKind, centre: Array, size: tuple[float, float]) -> Array:
     if kind == "input":
         n = 0.45 * h
         corners = [(-w, -h), (w, -h), (w - n, 0), (w, h), (-w, h), (-w + n, 0)]
-        return centre + np.array(corners)
+        return np.asarray(centre + np.array(corners))
     radius = {"switched": 0.0, "expressed": 0.35 * h, "pool": h}[kind]
     if radius == 0.0:
-        return centre + np.array([(-w, -h), (w, -h), (w, h), (-w, h)])
-    return centre + _rounded(w, h, radius)
+        return np.asarray(centre + np.array([(-w, -h), (w, -h), (w, h), (-w, h)]))
+    return np.asarray(centre + _rounded(w, h, radius))
 
 
 def _rounded(w: float, h: float, r: float) -> Array:

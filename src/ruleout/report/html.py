@@ -18,6 +18,7 @@ from ruleout.report.panels import panels_of, value_range
 from ruleout.report.picture import Picture, choices_of, lay_out
 from ruleout.report.style import COLOURS, VERDICT_SIGNS, condition_styles
 from ruleout.report.svg import GraphSymbols
+from ruleout.report.tables import records
 from ruleout.report.words import (
     CLAIM_VERDICTS,
     DOSING_CAUTION,
@@ -129,14 +130,14 @@ def html_report(judgement: Judgement, case: Case) -> str:
             "flags": split_names(row["flags"]),
             "graph": stamps.draw(choices_of(row["choices"]), _graph_label(row["edges"])),
         }
-        for row in by_verdict(judgement.variants).to_dict("records")
+        for row in records(by_verdict(judgement.variants))
     ]
     evidence, left_out = _evidence(judgement, rows)
     return render(
         "judgement.html",
         meta=judgement.meta,
         headline=headline(judgement.variants),
-        claims=judgement.claims.to_dict("records"),
+        claims=records(judgement.claims),
         rows=rows,
         graph=GraphSymbols(picture, "m").draw_with_letters(
             f"Graph of {case.mechanism.title} with its contested parts dashed"
@@ -190,7 +191,7 @@ def _abbreviated(picture: Picture) -> list[tuple[str, str]]:
 
 def _findings(judgement: Judgement, variant: str) -> list[dict[str, Any]]:
     findings = judgement.findings
-    return list(findings[findings["variant"] == variant].to_dict("records"))
+    return records(findings[findings["variant"] == variant])
 
 
 def _evidence(judgement: Judgement, rows: list[dict[str, Any]]) -> tuple[list[Markup], list[str]]:
@@ -234,7 +235,8 @@ def _by_variant(judgement: Judgement) -> Callable[[str, str], pd.DataFrame]:
 
     def rows(table: str, variant: str) -> pd.DataFrame:
         whole: pd.DataFrame = getattr(judgement, table)
-        return groups[table].get(variant, whole.iloc[:0])
+        found: pd.DataFrame = groups[table].get(variant, whole.iloc[:0])
+        return found
 
     return rows
 
@@ -262,9 +264,8 @@ def _checks(checks: pd.DataFrame, replicates: pd.DataFrame, alpha: float) -> lis
     ``first`` are those to be seen at once: they count or fail.
     """
     rows = []
-    for row in checks.sort_values("counts_for_verdict", ascending=False, kind="stable").to_dict(
-        "records"
-    ):
+    ordered = checks.sort_values("counts_for_verdict", ascending=False, kind="stable")
+    for row in records(ordered):
         counts = bool(row["counts_for_verdict"])
         draws = replicates["value"][replicates["check"] == row["check"]].to_numpy(float)
         fails = bool(row["p_value"] <= alpha)
@@ -277,7 +278,7 @@ def _checks(checks: pd.DataFrame, replicates: pd.DataFrame, alpha: float) -> lis
 
 def _parameters(parameters: pd.DataFrame, quantiles: pd.DataFrame) -> list[dict[str, Any]]:
     rows = []
-    for row in parameters.to_dict("records"):
+    for row in records(parameters):
         mine = quantiles[quantiles["parameter"] == row["parameter"]]
         positive = bool((mine[["posterior", "prior"]] > 0).all(axis=None))
         rows.append({**row, "chart": marginal_chart(mine, logarithmic=positive)})

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
 
+from ruleout.report.tables import variant_row
 from ruleout.report.words import FAILURES
 from ruleout.verdicts.types import Judgement
 
@@ -40,20 +42,22 @@ class Panel:
     held_out: bool
 
 
-def _where_it_fails(judgement: Judgement, variant: pd.Series) -> pd.DataFrame:
+def _where_it_fails(judgement: Judgement, variant: Mapping[str, Any]) -> pd.DataFrame:
     """Return the located checks that speak against a ruled-out variant."""
     checks = judgement.checks
-    mine = checks[(checks["variant"] == variant["variant"]) & (checks["readout"] != "")]
+    mine: pd.DataFrame = checks[
+        (checks["variant"] == variant["variant"]) & (checks["readout"] != "")
+    ]
     if variant["verdict"] != "ruled_out":
         return mine.iloc[:0]
     decisive = mine["check"] == variant["decisive_check"]
-    return mine[decisive | (mine["p_value"] <= judgement.meta["alpha"])]
+    failing: pd.DataFrame = mine[decisive | (mine["p_value"] <= judgement.meta["alpha"])]
+    return failing
 
 
 def panels_of(judgement: Judgement, variant: str) -> list[Panel]:
     """Return the panels of a variant: readouts in order, conditions in order within each."""
-    row = judgement.variants.set_index("variant", drop=False).loc[variant]
-    failing = _where_it_fails(judgement, row)
+    failing = _where_it_fails(judgement, variant_row(judgement, variant))
     curves = judgement.curves[judgement.curves["variant"] == variant]
     points = judgement.residuals[judgement.residuals["variant"] == variant]
     panels: list[Panel] = []

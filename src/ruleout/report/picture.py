@@ -118,7 +118,7 @@ def lay_out(mechanism: Mechanism, *, compact: bool = False) -> Picture:
 
 def choices_of(cell: str) -> dict[str, str]:
     """Return the choices written in a variants table: contested name to option."""
-    return dict(part.split("=", 1) for part in split_names(cell))  # type: ignore[misc]
+    return dict(part.split("=", 1) for part in split_names(cell))
 
 
 def inks(picture: Picture, choices: Mapping[str, str] | None = None) -> list[Ink]:

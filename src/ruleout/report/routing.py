@@ -104,9 +104,11 @@ def _candidates(
     return np.array(routes)
 
 
-def _inside(points: Array, centre: Array, size: tuple[float, float], margin: float) -> Array:
+def _inside(
+    points: Array, centre: Array, size: tuple[float, float], margin: float
+) -> NDArray[np.bool_]:
     half = np.array(size) / 2 + margin
-    return np.asarray((np.abs(points - centre) <= half).all(axis=-1))
+    return np.asarray((np.abs(points - centre) <= half).all(axis=-1), bool)
 
 
 def _clip(curves: Array, ends: Sequence[tuple[Array, tuple[float, float]]]) -> Array:
@@ -201,13 +203,13 @@ def route(
     for group in (on_nodes, on_edges):
         options = {i: _options(i, pieces, by_name, at, box, flow, chosen) for i in group}
         for _ in range(4):
-            before = {i: chosen.get(i) for i in group}
+            before = dict(chosen)
             for i in group:
                 curves, xy, price = options[i]
                 others = [bezier(c, _T) for j, c in chosen.items() if j != i]
                 total = price + _price_against_strokes(xy, others, reach)
                 chosen[i] = curves[int(np.argmin(total))]
-            if all(before[i] is not None and np.array_equal(before[i], chosen[i]) for i in group):
+            if all(i in before and np.array_equal(before[i], chosen[i]) for i in group):
                 break
     return [Stroke(piece, chosen[i]) for i, piece in enumerate(pieces)]
 

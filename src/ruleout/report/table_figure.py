@@ -18,6 +18,7 @@ from ruleout.report.style import (
     VERDICT_COLOURS,
     VERDICT_SIGNS,
 )
+from ruleout.report.tables import records
 from ruleout.report.words import VERDICTS, by_verdict, check_words, p_text
 from ruleout.verdicts.types import Judgement
 
@@ -35,7 +36,7 @@ def table_figure(judgement: Judgement, picture: Picture) -> Figure:
     from matplotlib.figure import Figure
 
     rows = by_verdict(judgement.variants)
-    shown = rows.head(MOST_ROWS).to_dict("records")
+    shown = records(rows.head(MOST_ROWS))
     hidden = len(rows) - len(shown)
     letters = picture.letters
     cell = 4.5

@@ -85,7 +85,7 @@ def headline(variants: pd.DataFrame) -> str:
     counts = variants["verdict"].value_counts()
     parts = [
         f"{counts.get(verdict, 0)} {'is' if counts.get(verdict, 0) == 1 else 'are'} {words}"
-        for verdict, words in reversed(VERDICTS.items())
+        for verdict, words in reversed(list(VERDICTS.items()))
         if counts.get(verdict, 0) or verdict != "not_judged"
     ]
     total = f"{len(variants)} variants" if len(variants) != 1 else "one variant"
