@@ -16,13 +16,13 @@ from ruleout.verdicts.types import Judgement
 
 REFERENCES: Final = {
     "berger": "Berger RL (1982). Multiparameter hypothesis testing and acceptance sampling. "
-    "Technometrics 24, 295-300. doi:10.2307/1267823",
+    "Technometrics 24, 295-300. doi:10.1080/00401706.1982.10487790",
     "besag": "Besag J, Clifford P (1991). Sequential Monte Carlo p-values. Biometrika 78, 301-304. "
     "doi:10.1093/biomet/78.2.301",
     "emcee": "Foreman-Mackey D, Hogg DW, Lang D, Goodman J (2013). emcee: The MCMC Hammer. "
     "Publications of the Astronomical Society of the Pacific 125, 306-312. doi:10.1086/670067",
     "finner": "Finner H, Strassburger K (2002). The partitioning principle: a powerful tool in "
-    "multiple decision theory. Annals of Statistics 30, 1194-1213. doi:10.1214/aos/1031689021",
+    "multiple decision theory. Annals of Statistics 30, 1194-1213. doi:10.1214/aos/1031689023",
     "gandy": "Gandy A (2009). Sequential implementation of Monte Carlo tests with uniformly "
     "bounded resampling risk. Journal of the American Statistical Association 104, 1504-1511. "
     "doi:10.1198/jasa.2009.tm08368",

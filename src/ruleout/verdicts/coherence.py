@@ -2,7 +2,7 @@
 
 References
 ----------
-.. [1] H. Finner, K. Strassburger, Ann. Stat. 30 (2002) 1194, doi:10.1214/aos/1031689021.
+.. [1] H. Finner, K. Strassburger, Ann. Stat. 30 (2002) 1194, doi:10.1214/aos/1031689023.
 .. [2] R. L. Berger, Technometrics 24 (1982) 295, doi:10.1080/00401706.1982.10487790.
 """
 
