@@ -91,7 +91,7 @@ class Store:
         """Return the piece, or None if it is missing, out of date or damaged."""
         path = self.path(key)
         try:
-            with np.load(path, allow_pickle=False) as archive:
+            with open(path, "rb") as file, np.load(file, allow_pickle=False) as archive:
                 if str(archive["digest"]) != fingerprint:
                     self.outdated.append(key)
                     return None

@@ -60,7 +60,7 @@ def enumerate_family(family: Family) -> Signs:
 
 def codes(signs: Signs) -> NDArray[np.int64]:
     """Return the number of each wiring: its signs as base-3 digits (-, 0, +), row by row."""
-    flat = signs.reshape(len(signs), -1).astype(np.int64) + 1
+    flat = signs.reshape(len(signs), signs.shape[1] ** 2).astype(np.int64) + 1
     weights = 3 ** np.arange(flat.shape[1] - 1, -1, -1, dtype=np.int64)
     return np.asarray(flat @ weights)
 

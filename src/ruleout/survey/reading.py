@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import MISSING, dataclass, fields
 from pathlib import Path
 from typing import Any, Final, get_args
@@ -19,7 +19,7 @@ FAMILY_KEYS: Final = (
 )  # fmt: skip
 NODE_KINDS: Final[Mapping[Style, str]] = {"enzyme": "switched", "gene": "expressed"}
 SIGN: Final[Mapping[str, int]] = {"stimulates": 1, "inhibits": -1, "absent": 0}
-MOST_NODES: Final = 6
+MOST_NODES: Final = 5
 MOST_SETS: Final = 1_000_000
 
 
@@ -157,11 +157,20 @@ def _read_signs(edge: Section) -> tuple[int, ...]:
     return tuple(sorted(SIGN[option] for option in options))
 
 
+def _named(table: Section) -> Iterator[tuple[str, Any]]:
+    """Yield ranges by full name, whether ``EDGE.part`` stands in quotes or not."""
+    for outer, value in table.values.items():
+        if isinstance(value, Mapping) and not value.keys() <= {"low", "high"}:
+            yield from ((f"{outer}.{inner}", v) for inner, v in value.items())
+        else:
+            yield outer, value
+
+
 def _read_ranges(top: Section, style: Style) -> dict[str, Range]:
     table = top.section("range")
     parts = DEFAULT_RANGES[style]
     found: dict[str, Range] = {}
-    for name, value in top.parameters("range").items():
+    for name, value in _named(table):
         if name.rpartition(".")[2] not in parts:
             table.fail(name, f"'{name}' has no range here; ranges are for {', '.join(parts)}")
         if isinstance(value, Mapping):

@@ -80,7 +80,7 @@ class Family:
     drives: tuple[tuple[int, int], ...]
     allowed: tuple[tuple[tuple[int, ...], ...], ...]
     fewest_edges: int = 0
-    most_edges: int = 36
+    most_edges: int = 25
     must_reach: bool = True
     connected: bool = False
     relabelled: bool = False

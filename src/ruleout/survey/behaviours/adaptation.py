@@ -41,9 +41,11 @@ class Adaptation:
     after: float = 0.6
     floor: float = 1e-6
     name: ClassVar[str] = "adaptation"
+    verb: ClassVar[str] = "adapts"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "sensitivity"
+    measured: ClassVar[tuple[str, ...]] = ("sensitivity", "precision")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares.

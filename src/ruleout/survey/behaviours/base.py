@@ -81,17 +81,23 @@ class Behaviour(Protocol):
     Attributes
     ----------
     name : str
+    verb : str
+        What a network that shows it does, such as ``adapts``.
     needs_input, needs_expressed : bool
         Whether it needs an input, and an output with a loss rate.
     rank : str
         The measure by which showing sets are ranked, best first; with ``-`` in front the smallest
         is best.
+    measured : tuple of str
+        Names of its measures, in order.
     """
 
     name: ClassVar[str]
+    verb: ClassVar[str]
     needs_input: ClassVar[bool]
     needs_expressed: ClassVar[bool]
     rank: ClassVar[str]
+    measured: ClassVar[tuple[str, ...]]
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares."""

@@ -35,9 +35,11 @@ class Hysteresis:
     points: int = 33
     apart: float = 0.1
     name: ClassVar[str] = "hysteresis"
+    verb: ClassVar[str] = "shows hysteresis"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "width"
+    measured: ClassVar[tuple[str, ...]] = ("width", "gap")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares.

@@ -35,9 +35,11 @@ class Multistability:
     apart: float = 0.01
     level: float = 0.5
     name: ClassVar[str] = "multistability"
+    verb: ClassVar[str] = "has several stable states"
     needs_input: ClassVar[bool] = False
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "fold"
+    measured: ClassVar[tuple[str, ...]] = ("states", "fold")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares.

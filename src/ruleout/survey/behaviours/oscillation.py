@@ -56,9 +56,11 @@ class Oscillation:
     drift: float = 0.01
     level: float = 0.5
     name: ClassVar[str] = "oscillation"
+    verb: ClassVar[str] = "oscillates"
     needs_input: ClassVar[bool] = False
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "amplitude"
+    measured: ClassVar[tuple[str, ...]] = ("amplitude", "period")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares, from the subject's own start.

@@ -39,9 +39,11 @@ class Pulse:
     after: float = 1.0
     floor: float = 1e-3
     name: ClassVar[str] = "pulse"
+    verb: ClassVar[str] = "answers with a pulse"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "height"
+    measured: ClassVar[tuple[str, ...]] = ("height", "back")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares; measures are ``height`` and ``back``."""

@@ -43,9 +43,11 @@ class Switch:
     high: float = 1e3
     points: int = 37
     name: ClassVar[str] = "switch"
+    verb: ClassVar[str] = "answers like a switch"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = False
     rank: ClassVar[str] = "hill_coefficient"
+    measured: ClassVar[tuple[str, ...]] = ("hill_coefficient", "ec50", "swing")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares, on the way up.

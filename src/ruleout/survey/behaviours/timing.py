@@ -98,9 +98,11 @@ class Acceleration:
     after: float = 1.0
     change: float = 0.1
     name: ClassVar[str] = "acceleration"
+    verb: ClassVar[str] = "answers faster than simple regulation"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = True
     rank: ClassVar[str] = "-response_ratio"
+    measured: ClassVar[tuple[str, ...]] = ("response_ratio",)
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares; the measure is ``response_ratio``."""
@@ -128,9 +130,11 @@ class Delay:
     after: float = 1.0
     change: float = 0.1
     name: ClassVar[str] = "delay"
+    verb: ClassVar[str] = "delays one direction of a step"
     needs_input: ClassVar[bool] = True
     needs_expressed: ClassVar[bool] = True
     rank: ClassVar[str] = "delay"
+    measured: ClassVar[tuple[str, ...]] = ("delay", "delay_on", "delay_off")
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares.
