@@ -450,9 +450,10 @@ def integrate(
                     continue
                 g = whole(at, Place.HOLDS, slot)
                 verdict = whole(at, Place.STATUS, g * group)
+                arrived = _control(at, lane, Control.TIME) == _control(at, lane, Control.STOP)
                 if verdict != RUNNING:
                     pass
-                elif _control(at, lane, Control.TIME) == _control(at, lane, Control.STOP):
+                elif arrived and mode != SETTLE:
                     if _arrive(at, slot, g):
                         verdict = Status.OK
                     elif _control(at, lane, Control.FRESH) > 0.0:

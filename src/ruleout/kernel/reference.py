@@ -135,7 +135,7 @@ class ReferenceBackend:
         live = np.arange(rows)
         y, q = y0.copy(), q0
         f = self.slopes(y, q)
-        bad = ~np.isfinite(f).all(axis=1)
+        bad = ~(np.isfinite(f) & np.isfinite(y)).all(axis=1)
         status[bad] = Status.BAD_START
         live, y, q = live[~bad], y[~bad], q[~bad]
         h = self._first_step(y, q, _STEADY_RTOL, self._floor(y))
@@ -244,7 +244,7 @@ class _Run:
             y, lead = self.y[live], np.searchsorted(live, self.leader[live])
             new, error, _ = self.backend.attempt(y, self.q[live], h)
             scale = atol + rtol * np.maximum(np.abs(y), np.abs(new))
-            size = np.max(np.abs(error) / scale, axis=1)[lead]
+            size = _worst(np.max(np.abs(error) / scale, axis=1), lead)
             self.steps[live] += 1
             accepted = size <= 1.0
             moved = live[accepted]
@@ -313,6 +313,13 @@ def _combine(weights: Sequence[float], ks: Sequence[Array]) -> Any:
     for weight, k in zip(weights, ks, strict=True):
         total = total + weight * k
     return total
+
+
+def _worst(size: Array, lead: NDArray[np.intp]) -> Array:
+    """Return the largest error in each row's group; rows that are NaN count only if they lead."""
+    worst = size.copy()
+    np.fmax.at(worst, lead, size)
+    return np.where(np.isnan(size[lead]), np.nan, worst[lead])
 
 
 def _growth(size: Array) -> Array:
