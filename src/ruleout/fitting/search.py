@@ -69,7 +69,7 @@ def _screen(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequ
     # The outer 5 % tails of unbounded priors make poor starts and cost the stiffest solves.
     bounded = np.isfinite(space.low)
     q = space.quantile(np.where(bounded, u, 0.05 + 0.9 * u))
-    zeta, _ = posterior.zeta(q, 1e-4)
+    zeta, _ = posterior.zeta(q, posterior.sampling_rtol)
     data = posterior.observed
     profiled = posterior.noise.profile(q, zeta, data, posterior.fitted)
     objective = posterior.objective(profiled, zeta, data)
@@ -82,11 +82,24 @@ def _screen(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequ
     return np.asarray(profiled[np.concatenate([best, rest])])
 
 
-def search(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequence) -> Search:
+def search(
+    posterior: Posterior,
+    effort: SearchEffort,
+    seed: np.random.SeedSequence,
+    known: Array | None = None,
+) -> Search:
     """Find the best fit of ``posterior`` to the observed data.
 
     Starts are scattered over the prior, screened, and descended from by Levenberg-Marquardt;
     rounds of new starts follow until two agree on the best objective.
+
+    Parameters
+    ----------
+    posterior : Posterior
+    effort : SearchEffort
+    seed : SeedSequence
+    known : (K, D) array, optional
+        Further starts of the first round, such as a truth that the data were simulated from.
     """
     d = posterior.space.dimension
     if d == 0:
@@ -97,8 +110,10 @@ def search(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSeque
     objectives = np.zeros(0)
     started = 0
     agree = 0
-    for child in seed.spawn(1 + effort.rounds):
+    for number, child in enumerate(seed.spawn(1 + effort.rounds)):
         starts = _screen(posterior, effort, child)
+        if number == 0 and known is not None:
+            starts = np.concatenate([known, starts])
         if len(starts):
             # A coarse descent of all, then a fine one of those that may still win.
             coarse = descend(posterior, starts, posterior.observed, tolerance=0.1, iterations=25)

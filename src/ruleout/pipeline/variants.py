@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import asyncio
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
 from itertools import combinations
 
 import numpy as np
@@ -13,7 +13,17 @@ from ruleout.pipeline import tasks
 from ruleout.pipeline.flow import Checks, Fit, Flow
 from ruleout.pipeline.tasks import Arrays
 from ruleout.store import digest
-from ruleout.verdicts import KEPT, ClaimVerdict, Own, Verdict, judge_claim, settle
+from ruleout.verdicts import (
+    FEW_POINTS,
+    KEPT,
+    ClaimVerdict,
+    Own,
+    Verdict,
+    corrected_aic,
+    judge_claim,
+    separated,
+    settle,
+)
 
 REACHABLE_SHARE = 0.025
 """No-effect counts as reachable in at least this share of the larger variant's own prior."""
@@ -25,18 +35,20 @@ MATCH_OBJECTIVE = 1.0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Results:
-    """Everything found about the variants of a case.
+class Settled:
+    """The verdicts on the variants and claims of a case, and what they rest on.
 
     Attributes
     ----------
-    fits, own, verdicts, summaries : mappings by variant
+    fits, own, verdicts : mappings by variant
     checks : mapping by variant
         Missing where coherence made them unnecessary or the fit could not be used.
     contains : mapping
         The nesting confirmed by the reach of no-effect.
     unreachable : tuple of pairs
         (larger, smaller) of candidate nestings that failed that test.
+    spared : frozenset
+        Variants not ruled out for want of points, whatever their p-value.
     """
 
     order: tuple[str, ...]
@@ -47,12 +59,42 @@ class Results:
     contains: dict[str, frozenset[str]]
     unreachable: tuple[tuple[str, str], ...]
     claims: tuple[ClaimVerdict, ...]
+    spared: frozenset[str]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Results(Settled):
+    """Everything found about the variants of a case.
+
+    Attributes
+    ----------
+    summaries, likelihoods : mappings by variant
+    findings : mapping
+        What looking at the case before fitting has found.
+    """
+
     summaries: dict[str, Arrays]
     likelihoods: dict[str, Arrays]
     findings: Arrays
 
 
 async def judge_variants(flow: Flow) -> Results:
+    """Look at the case, fit and check all variants, settle the claims and sum up the fits."""
+    async with asyncio.TaskGroup() as group:
+        looking = group.create_task(
+            flow.piece("inspection", flow.whole, tasks.inspect, flow.settings.seed)
+        )
+        settling = group.create_task(settle_variants(flow))
+    settled = settling.result()
+    return Results(
+        **{part.name: getattr(settled, part.name) for part in fields(settled)},
+        summaries=await _each(flow, settled.fits, _summary),
+        likelihoods=await _each(flow, settled.fits, _likelihood),
+        findings=looking.result(),
+    )
+
+
+async def settle_variants(flow: Flow) -> Settled:
     """Fit and check all variants and settle the claims."""
     variants = flow.bench.variants
     order = tuple(variants.variants)
@@ -93,22 +135,20 @@ async def judge_variants(flow: Flow) -> Results:
         return kept or by_coherence
 
     async with asyncio.TaskGroup() as group:
-        looking = group.create_task(
-            flow.piece("inspection", flow.whole, tasks.inspect, flow.settings.seed)
-        )
         for name in order:
             fits[name] = group.create_task(flow.fit(name))
         for name in order:
             verdict_ready[name] = group.create_task(keeps(name))
     done = {name: task.result() for name, task in fits.items()}
     contains = _transitive(order, confirmed)
+    spared = _spared(flow, done, own)
+    for name in spared:
+        own[name] = replace(own[name], rejected=False)
     alike = await _alike(flow, order, done, contains, own)
     verdicts = settle(order, contains, own, alike)
     plain = {name: v.verdict for name, v in verdicts.items()}
     claims = tuple(judge_claim(c, order, plain, contains) for c in variants.claims)
-    summaries = await _each(flow, done, _summary)
-    likelihoods = await _each(flow, done, _likelihood)
-    return Results(
+    return Settled(
         order,
         done,
         checks,
@@ -117,9 +157,23 @@ async def judge_variants(flow: Flow) -> Results:
         contains,
         tuple(sorted(unreachable)),
         claims,
-        summaries,
-        likelihoods,
-        looking.result(),
+        spared,
+    )
+
+
+def _spared(flow: Flow, fits: dict[str, Fit], own: dict[str, Own]) -> frozenset[str]:
+    """Return variants that too few points of free noise do not suffice to rule out."""
+    criteria = {}
+    for name, fit in fits.items():
+        posterior = flow.bench.posterior(name)
+        points = int(posterior.fitted.sum())
+        if points >= FEW_POINTS or posterior.noise.known.all():
+            return frozenset()
+        if own[name].judged:
+            loglik = -0.5 * (fit.objective - float(posterior.space.penalty(fit.best)))
+            criteria[name] = corrected_aic(loglik, posterior.space.dimension, points)
+    return frozenset(
+        name for name in criteria if own[name].rejected and not separated(name, criteria)
     )
 
 
@@ -174,9 +228,7 @@ async def _alike(
     gaps = await asyncio.gather(
         *(flow.run(tasks.match, a, fits[a].best, b, fits[b].best) for a, b in candidates)
     )
-    return [
-        pair for pair, g in zip(candidates, gaps, strict=True) if float(g["gap"]) < tasks.REACH
-    ]
+    return [pair for pair, g in zip(candidates, gaps, strict=True) if float(g["gap"]) < tasks.REACH]
 
 
 async def _each(flow: Flow, fits: dict[str, Fit], make) -> dict[str, Arrays]:  # type: ignore[no-untyped-def]
