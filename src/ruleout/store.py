@@ -180,7 +180,8 @@ def _write_bytes(path: Path, content: bytes) -> None:
 
 def _records(table: pd.DataFrame) -> list[dict[str, Any]]:
     """Return the rows with NaN as null and infinities as text, which JSON cannot hold."""
-    return [{key: _plain(value) for key, value in row.items()} for row in table.to_dict("records")]
+    rows = table.to_dict("records")
+    return [{str(key): _plain(value) for key, value in row.items()} for row in rows]
 
 
 def _plain(value: Any) -> Any:

@@ -77,9 +77,7 @@ def test_max_t_is_uniform_under_the_null():
     for _ in range(trials):
         standard = standardise(draw(40), columns)
         data, copies = draw(1), draw(replicates)
-        exceed = np.sum(
-            maximum(copies, columns, standard) >= maximum(data, columns, standard)[0]
-        )
+        exceed = np.sum(maximum(copies, columns, standard) >= maximum(data, columns, standard)[0])
         rejected += (exceed + 1) / (replicates + 1) <= ALPHA
     # 4 binomial standard errors
     assert abs(rejected / trials - ALPHA) < 4 * np.sqrt(ALPHA * (1 - ALPHA) / trials)

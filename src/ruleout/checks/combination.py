@@ -44,7 +44,7 @@ def standardise(pilot: Array, columns: tuple[Column, ...]) -> Standard:
 
 def maximum(values: Array, columns: tuple[Column, ...], standard: Standard) -> Array:
     """Return the largest standardised statistic per row, (B, C) -> (B,)."""
-    return np.max(standardised(values, columns, standard), axis=1)
+    return np.asarray(np.max(standardised(values, columns, standard), axis=1))
 
 
 def standardised(values: Array, columns: tuple[Column, ...], standard: Standard) -> Array:

@@ -35,9 +35,7 @@ class Edges:
         Of the neighbouring variants that have the choice.
     """
 
-    def __init__(
-        self, posterior: Posterior, neighbours: Mapping[str, Sequence[Posterior]]
-    ) -> None:
+    def __init__(self, posterior: Posterior, neighbours: Mapping[str, Sequence[Posterior]]) -> None:
         self._neighbours = [list(group) for group in neighbours.values()]
         self._space = posterior.space
         self.columns = tuple(Column(f"edge:{name}", counts=True) for name in neighbours)
@@ -66,7 +64,7 @@ class Edges:
         if candidates > 1:
             flat = starts.reshape(-1, d)
             wide = sample.repeat(candidates)
-            zeta, _ = neighbour.zeta(flat, 1e-4)
+            zeta, _ = neighbour.zeta(flat, neighbour.sampling_rtol)
             flat = neighbour.noise.profile(flat, zeta, wide, neighbour.fitted)
             screened = neighbour.objective(flat, zeta, wide).reshape(rows, candidates)
             best = np.argsort(screened, axis=1, kind="stable")[:, :STARTS]

@@ -46,9 +46,7 @@ class Checker:
         Of the neighbouring variants that have the choice (see `Edges`).
     """
 
-    def __init__(
-        self, posterior: Posterior, neighbours: Mapping[str, Sequence[Posterior]]
-    ) -> None:
+    def __init__(self, posterior: Posterior, neighbours: Mapping[str, Sequence[Posterior]]) -> None:
         self.posterior = posterior
         self._statistics = Statistics(posterior)
         self._edges = Edges(posterior, neighbours)
@@ -89,9 +87,7 @@ class Checker:
         at = np.flatnonzero(good)
         if len(at):
             chosen = [generators[i] for i in at]
-            sample = self.posterior.noise.draw(
-                draws[at], zeta[at], self.posterior.observed, chosen
-            )
+            sample = self.posterior.noise.draw(draws[at], zeta[at], self.posterior.observed, chosen)
             uniform = np.stack([g.uniform(size=zeta.shape[1]) for g in chosen])
             found = self.evaluate(draws[at], sample, uniform)
             values[at], q[at], objective[at] = found.values, found.q, found.objective

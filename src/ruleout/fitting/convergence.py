@@ -11,7 +11,6 @@ import warnings
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from types import ModuleType
 from typing import Any
 
 import numpy as np
@@ -22,7 +21,7 @@ from scipy.stats import rankdata
 Array = NDArray[np.float64]
 
 
-def _arviz() -> ModuleType:
+def _arviz() -> Any:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         import arviz
@@ -65,7 +64,7 @@ def _ess_of_mean(values: Array) -> float:
     if spread == 0.0 or noise == 0.0:
         return float(values.size)
     effective = float(_arviz().ess(averages, method="mean"))
-    return min(effective * spread / noise, float(values.size))
+    return float(min(effective * spread / noise, float(values.size)))
 
 
 def diagnose(chains: Array) -> Convergence:
@@ -126,7 +125,7 @@ def leave_one_out(log_likelihood: Array) -> tuple[float, float, Array, Array]:
     )
 
 
-def _inference_data(groups: Mapping[str, Mapping[str, Array]], **attributes: Any) -> Any:
+def _inference_data(groups: Mapping[str, Mapping[str, Array]]) -> Any:
     arviz = _arviz()
     if not groups["posterior"]:
         shape = groups["log_likelihood"]["y"].shape[:2]

@@ -55,7 +55,7 @@ def _steps(gradient: Array, curvature: Array, damping: Array, held: NDArray[np.b
     scaled = np.where(free[:, :, None] & free[:, None, :], scaled, 0.0)
     scaled += np.where(held, 1.0, damping[:, None])[:, :, None] * np.eye(gradient.shape[1])
     pull = np.where(held, 0.0, gradient / root)
-    return np.linalg.solve(scaled, pull[:, :, None])[:, :, 0] / root
+    return np.asarray(np.linalg.solve(scaled, pull[:, :, None])[:, :, 0] / root)
 
 
 def descend(

@@ -141,9 +141,7 @@ class Noise:
             if self.any_student:
                 nu = self._nu(q)
                 score = np.where(self._student, (nu + 1) * e / (nu + e * e) / sigma, score)
-                information = np.where(
-                    self._student, (nu + 1) / (nu + 3) / sigma**2, information
-                )
+                information = np.where(self._student, (nu + 1) / (nu + 3) / sigma**2, information)
             if sample.censored.any():
                 side = np.where(sample.censored == BELOW, 1.0, -1.0)
                 a = side * e
@@ -166,7 +164,6 @@ class Noise:
         if not self.free:
             return q
         q = q.copy()
-        space = self._space
         for j, points in self.free:
             rows = points & use
             if not rows.any():
@@ -204,7 +201,7 @@ class Noise:
     ) -> Array:
         loglik = self.loglik(q, zeta, sample)[:, rows].sum(axis=1)
         z = (q[:, j] - self._space.center[j]) / self._space.sd[j]
-        return loglik - 0.5 * z * z
+        return np.asarray(loglik - 0.5 * z * z)
 
     def _newton(
         self, q: Array, zeta: Array, sample: Sample, rows: NDArray[np.bool_], j: int

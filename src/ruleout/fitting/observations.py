@@ -63,7 +63,11 @@ class Sample:
         """Return every data set ``times`` times in a row."""
         if len(self.z) == 1:
             return self
-        return Sample(*(np.repeat(a, times, axis=0) for a in (self.z, self.censored, self.sd)))
+        return Sample(
+            np.repeat(self.z, times, axis=0),
+            np.repeat(self.censored, times, axis=0),
+            np.repeat(self.sd, times, axis=0),
+        )
 
 
 def working(values: Array, logarithmic: NDArray[np.bool_]) -> Array:
@@ -125,9 +129,8 @@ class Observations:
             rows = np.flatnonzero((self.which == r) & self.points.fitted)
             _, member = np.unique(self.groups[rows], return_inverse=True)
             count = np.bincount(member)
-            mean = np.zeros((len(z), len(count)))
-            np.add.at(mean, (slice(None), member), z[:, rows])
-            residual = z[:, rows] - (mean / count)[:, member]
+            of_group = (member[:, None] == np.arange(len(count))).astype(float)
+            residual = z[:, rows] - (z[:, rows] @ of_group / count)[:, member]
             squares[:, r] = np.sum(residual**2, axis=1)
             df[r] = np.sum(count - 1)
         return squares, df

@@ -152,9 +152,7 @@ def catalogue(
     return _close(_without_unused(entries, model, experiments))
 
 
-def _without_unused(
-    entries: list[Entry], model: Model, experiments: Experiments
-) -> list[Entry]:
+def _without_unused(entries: list[Entry], model: Model, experiments: Experiments) -> list[Entry]:
     """Drop parameters that every measured condition replaces by an own value.
 
     They would be free to wander over their prior without touching any prediction.

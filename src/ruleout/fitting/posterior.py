@@ -19,9 +19,11 @@ from ruleout.mechanism.types import Mechanism
 
 Array = NDArray[np.float64]
 SAMPLING_RTOL = 1e-4
-"""Solver tolerance in MCMC: an error of at most about 0.03 in the log likelihood."""
+"""Loosest solver tolerance in MCMC."""
 REPORTING_RTOL = 1e-6
-"""Solver tolerance of searches, refits, verdicts and reported curves."""
+"""Loosest solver tolerance of searches, refits, verdicts and reported curves."""
+SOLVER_SHARE = 0.03
+"""Largest solver error in MCMC, in standard deviations of the noise."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -70,16 +72,35 @@ class Posterior:
         self.predict = Predictor(model, experiments, self.catalogue, self.observations.points)
         self.fitted = self.observations.points.fitted
         self.observed = self.observations.observed
+        self.sampling_rtol = min(SAMPLING_RTOL, SOLVER_SHARE * self._relative_noise())
+        self.rtol = min(REPORTING_RTOL, 0.1 * self.sampling_rtol)
         self._noise_coordinates = np.array([j for j, _ in self.noise.free], dtype=np.intp)
+
+    def _relative_noise(self) -> float:
+        """Return the least noise to be expected, relative to the size of its readout.
+
+        Stated and pure-error sd count as they are, free ones at a tenth of their prior median.
+        """
+        middle = self.space.quantile(np.full((1, self.space.dimension), 0.5))
+        z = self.observed.z
+        sigma, _ = self.noise.sigma(middle, z, self.observed)
+        free = ~self.noise.known[self.observations.which]
+        sigma = np.where(free, 0.1 * sigma, sigma)
+        size = np.where(self.observations.logarithmic, 1.0, 1e-300)
+        for r in range(len(self.observations.readouts)):
+            rows = self.observations.which == r
+            size[rows] = np.maximum(size[rows], np.max(np.abs(z[0, rows]), initial=0.0))
+        size = np.where(self.observations.logarithmic, 1.0, size)
+        return float(np.clip(np.nanmin(sigma / size), 1e-8, 1.0))
 
     def objective(self, q: Array, zeta: Array, sample: Sample) -> Array:
         """Return -2 log posterior (B,) from working-scale predictions; inf where they failed."""
         loglik = self.noise.loglik(q, zeta, sample)[:, self.fitted].sum(axis=1)
-        return self.space.penalty(q) - 2.0 * loglik
+        return np.asarray(self.space.penalty(q) - 2.0 * loglik)
 
-    def zeta(self, q: Array, rtol: float = REPORTING_RTOL) -> tuple[Array, NDArray[np.int8]]:
+    def zeta(self, q: Array, rtol: float | None = None) -> tuple[Array, NDArray[np.int8]]:
         """Return working-scale predictions (B, n) and kernel statuses (B,)."""
-        mu, status = self.predict(q, rtol)
+        mu, status = self.predict(q, rtol or self.rtol)
         return self.noise.working(mu), status
 
     def log_density(self, q: Array) -> tuple[Array, NDArray[np.bool_]]:
@@ -92,14 +113,14 @@ class Posterior:
         failed = np.zeros(len(q), dtype=bool)
         inside = np.flatnonzero(self.space.inside(q) & np.isfinite(q).all(axis=1))
         if len(inside):
-            zeta, status = self.zeta(q[inside], SAMPLING_RTOL)
+            zeta, status = self.zeta(q[inside], self.sampling_rtol)
             out[inside] = -0.5 * self.objective(q[inside], zeta, self.observed)
             failed[inside] = status != Status.OK
         return out, failed
 
     def quadratic(self, q: Array, sample: Sample) -> Quadratic:
         """Return objective, score and curvature (noise parameters held)."""
-        mu, jacobian, _ = self.predict.derivatives(q)
+        mu, jacobian, _ = self.predict.derivatives(q, self.rtol)
         logarithmic = self.observations.logarithmic
         if logarithmic.any():
             with np.errstate(all="ignore"):

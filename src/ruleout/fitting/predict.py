@@ -51,7 +51,7 @@ def _rests_at_zero(setup: Setup) -> bool:
     """Return whether zero, from where rest is sought, is a steady state for all parameters."""
     system = setup.rest_system
     assert system is not None
-    known = {name: ZERO for name in system.states}
+    known = dict.fromkeys(system.states, ZERO)
     for name, factor, shift in zip(
         system.parameters, setup.rest_factor, setup.rest_shift, strict=True
     ):
@@ -222,9 +222,7 @@ class Predictor:
         }
         return np.asarray(evaluate([start.value], env)[0], dtype=float)
 
-    def _starts(
-        self, values: Array, group: int
-    ) -> tuple[dict[str, Array], NDArray[np.int8]]:
+    def _starts(self, values: Array, group: int) -> tuple[dict[str, Array], NDArray[np.int8]]:
         """Return the starting states of every condition and the status of finding them."""
         rows = len(values)
         status = np.zeros(rows, dtype=np.int8)

@@ -182,11 +182,11 @@ def scales(mechanism: Mechanism, experiments: Experiments) -> Scales:
         for _, series in data.groupby(["condition", "readout"], sort=False):
             steps = np.diff(np.unique(series["time"][np.isfinite(series["time"])]))
             intervals += list(steps)
-        for name, values in data.groupby("readout", sort=False)["value"]:
+        for readout, values in data.groupby("readout", sort=False)["value"]:
             top = float(values.abs().max())
             width = float(values.max() - values.min())
-            largest[str(name)] = top if top > 0 else 1.0
-            spread[str(name)] = width if width > 0 else (top if top > 0 else 1.0)
+            largest[str(readout)] = top if top > 0 else 1.0
+            spread[str(readout)] = width if width > 0 else (top if top > 0 else 1.0)
     elif experiments.plan is not None:
         plans = [experiments.plan, *experiments.plan.by_condition.values()]
         for plan in plans:
@@ -197,9 +197,7 @@ def scales(mechanism: Mechanism, experiments: Experiments) -> Scales:
     return Scales(last, min(intervals, default=last), inputs, largest, spread)
 
 
-def default_equation_prior(
-    kind: str, source: str, mechanism: Mechanism, known: Scales
-) -> Prior:
+def default_equation_prior(kind: str, source: str, mechanism: Mechanism, known: Scales) -> Prior:
     """Return the default prior of a parameter of the equations.
 
     Rates: log-uniform on [0.1/T, 10/d]. Levels and free starts: lognormal about 1 within a factor

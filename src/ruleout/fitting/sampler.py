@@ -132,8 +132,11 @@ def start_walkers(posterior: Posterior, found: Search, seed: np.random.SeedSeque
     density = _Density(posterior)
     q = np.empty((count, space.dimension))
     value = np.full(count, -np.inf)
+    # Far along a curved ridge the normal approximation leaves the posterior altogether; walkers
+    # started there would spend the whole run on the way back.
+    lowest = -0.5 * found.objective[0] - (10.0 + 4.0 * space.dimension)
     for attempt in range(60):
-        todo = np.flatnonzero(~np.isfinite(value))
+        todo = np.flatnonzero(~(value > lowest))
         if not len(todo):
             break
         shrink = OVERDISPERSION * 0.85**attempt
@@ -142,15 +145,17 @@ def start_walkers(posterior: Posterior, found: Search, seed: np.random.SeedSeque
             jump = roots[mode] @ rng.standard_normal(space.dimension)
             q[w] = _reflect(modes[mode] + shrink * jump, space.low, space.high)
         value[todo] = density(q[todo])
-    state = np.random.RandomState(np.random.MT19937(seed.spawn(1)[0])).get_state()
-    return Walkers(q, value, np.asarray(state[1]), np.array(state[2:], dtype=float))
+    _, key, *tail = np.random.RandomState(np.random.MT19937(seed.spawn(1)[0])).get_state(
+        legacy=True
+    )
+    return Walkers(q, value, np.asarray(key), np.array(tail, dtype=np.float64))
 
 
 def _root_of_inverse(curvature: Array, width: Array) -> Array:
     """Return a square root of the covariance, with directions no wider than the priors."""
     scaled = curvature * np.outer(width, width)
     values, vectors = np.linalg.eigh(scaled)
-    return width[:, None] * vectors / np.sqrt(np.maximum(values, 1.0))
+    return np.asarray(width[:, None] * vectors / np.sqrt(np.maximum(values, 1.0)))
 
 
 def _reflect(q: Array, low: Array, high: Array) -> Array:
@@ -182,17 +187,7 @@ def run_block(posterior: Posterior, walkers: Walkers, stored: int, thin: int) ->
     state = emcee.State(
         walkers.q, log_prob=walkers.log_density, random_state=random_state, copy=True
     )
-    for state in sampler.sample(  # noqa: B007 - the last state is what goes on
-        state,
-        iterations=stored,
-        thin_by=thin,
-        skip_initial_state_check=True,
-    ):
-        pass
+    state = sampler.run_mcmc(state, stored, thin_by=thin, skip_initial_state_check=True)
     _, key, *tail = state.random_state
-    after = Walkers(
-        state.coords, state.log_prob, np.asarray(key), np.array(tail, dtype=float)
-    )
-    return Block(
-        sampler.get_chain(), sampler.get_log_prob(), after, density.solved, density.failed
-    )
+    after = Walkers(state.coords, state.log_prob, np.asarray(key), np.array(tail, dtype=float))
+    return Block(sampler.get_chain(), sampler.get_log_prob(), after, density.solved, density.failed)

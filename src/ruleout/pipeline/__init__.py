@@ -86,9 +86,7 @@ def _run(main: Coroutine[Any, Any, Results]) -> Results:
 def _local_executor(workers: int) -> Executor:
     if workers == 1:
         return ThreadPoolExecutor(1, thread_name_prefix="ruleout")
-    return ProcessPoolExecutor(
-        workers, mp_context=get_context("spawn"), initializer=_begin_worker
-    )
+    return ProcessPoolExecutor(workers, mp_context=get_context("spawn"), initializer=_begin_worker)
 
 
 def _begin_worker() -> None:

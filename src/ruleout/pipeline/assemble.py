@@ -15,9 +15,8 @@ from ruleout.pipeline import tasks
 from ruleout.pipeline.settings import Settings
 from ruleout.pipeline.variants import Results, kept
 from ruleout.store import write_aside
-from ruleout.verdicts import COLUMNS, RULED_OUT, Judgement, reason
+from ruleout.verdicts import COLUMNS, FEW_POINTS, RULED_OUT, Judgement, reason
 
-FEW_POINTS = 10
 BAND = (0.05, 0.5, 0.95)
 
 
@@ -95,6 +94,8 @@ def _flags(
             flags.append(f"best fit on a prior bound: {', '.join(bound)}")
     if bench.posterior(name).fitted.sum() < FEW_POINTS:
         flags.append("few points")
+    if name in results.spared:
+        flags.append("too few points to rule it out: AICc does not separate it from the others")
     if verdict.alike:
         flags.append(f"not told apart from {', '.join(verdict.alike)} by these readouts")
     checks = results.checks.get(name)
@@ -109,7 +110,7 @@ def _flags(
         if checks.failed_share > 0.05:
             flags.append("replicates could not be solved")
     if not loo_sound:
-        flags.append("leave-one-out unreliable (Pareto k above 0.7)")
+        flags.append("leave-one-out unreliable")
     return flags
 
 

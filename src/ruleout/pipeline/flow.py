@@ -24,6 +24,7 @@ from ruleout.pipeline.tasks import Arrays, Workbench
 from ruleout.progress import Progress
 from ruleout.seeds import generator
 from ruleout.store import Store, digest
+from ruleout.variants import alternatives
 
 Array = NDArray[np.float64]
 FAILED_SHARE = 0.02
@@ -222,7 +223,9 @@ class Flow:
             converged = diagnostics.reached(effort.rhat, effort.ess)
             if converged:
                 break
-        assert kept is not None and density is not None and diagnostics is not None
+        assert kept is not None
+        assert density is not None
+        assert diagnostics is not None
         leading = np.stack(
             [kept[e].reshape(-1, kept.shape[-1])[np.argmax(density[e])] for e in range(ENSEMBLES)]
         )
@@ -250,7 +253,7 @@ class Flow:
     async def check(self, name: str, fit: Fit) -> Checks:
         """Compare the data's statistics with those of refitted replicates, as many as needed."""
         effort, seed = self.settings.spent, self.settings.seed
-        neighbours = self.bench.variants.neighbours[name]
+        neighbours = alternatives(self.bench.variants, name)
         fingerprint = digest(
             self.fingerprint(name),
             [(c, [self.fingerprint(n) for n in names]) for c, names in neighbours.items()],

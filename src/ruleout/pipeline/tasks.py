@@ -21,7 +21,7 @@ from ruleout.equations import build, unit_ties
 from ruleout.fitting import Posterior, SearchEffort, descend, search
 from ruleout.fitting.search import AGREEMENT, Search
 from ruleout.seeds import sequence
-from ruleout.variants import VariantSet, expand
+from ruleout.variants import VariantSet, alternatives, expand
 
 Arrays = dict[str, NDArray[Any]]
 REACH = 0.1
@@ -60,7 +60,7 @@ class Workbench:
         if name not in self._checkers:
             neighbours = {
                 choice: [self.posterior(n) for n in names]
-                for choice, names in self.variants.neighbours[name].items()
+                for choice, names in alternatives(self.variants, name).items()
             }
             self._checkers[name] = Checker(self.posterior(name), neighbours)
         return self._checkers[name]
@@ -99,12 +99,8 @@ def start_chain(bench: Workbench, name: str, found: Arrays, ensemble: int, seed:
     """Scatter the walkers of one ensemble."""
     from ruleout.fitting.sampler import start_walkers
 
-    optima = Search(
-        found["q"], found["objective"], int(found["agree"]), int(found["starts"])
-    )
-    walkers = start_walkers(
-        bench.posterior(name), optima, sequence(seed, name, "chain", ensemble)
-    )
+    optima = Search(found["q"], found["objective"], int(found["agree"]), int(found["starts"]))
+    walkers = start_walkers(bench.posterior(name), optima, sequence(seed, name, "chain", ensemble))
     return {
         "end_q": walkers.q,
         "end_log_density": walkers.log_density,
@@ -133,9 +129,7 @@ def extend_chain(bench: Workbench, name: str, before: Arrays, stored: int, thin:
     }
 
 
-def polish(
-    bench: Workbench, name: str, found: Arrays, leading: NDArray[np.float64]
-) -> Arrays:
+def polish(bench: Workbench, name: str, found: Arrays, leading: NDArray[np.float64]) -> Arrays:
     """Descend from the best draw of every ensemble and join the ends to the search's."""
     posterior = bench.posterior(name)
     if posterior.space.dimension:
@@ -156,7 +150,9 @@ def polish(
     }
 
 
-def observed_statistics(bench: Workbench, name: str, best: NDArray[np.float64], seed: int) -> Arrays:
+def observed_statistics(
+    bench: Workbench, name: str, best: NDArray[np.float64], seed: int
+) -> Arrays:
     """Evaluate every statistic on the data."""
     found = bench.checker(name).observed(best, sequence(seed, name, "observed"))
     return {"values": found.values, "objective": found.objective}
@@ -192,7 +188,7 @@ def reachable(bench: Workbench, larger: str, smaller: str, best: NDArray[np.floa
             q[:, j] = best[own[name]]
     target, _ = small.zeta(best[None])
     sigma, _ = small.noise.sigma(best[None], target, small.observed)
-    zeta, _ = big.zeta(q, 1e-5)
+    zeta, _ = big.zeta(q, big.sampling_rtol)
     gap = np.max(np.abs(zeta - target) / sigma, axis=1)
     return {"share": np.array(np.mean(gap < REACH))}
 
@@ -250,7 +246,7 @@ def likelihood(bench: Workbench, name: str, draws: NDArray[np.float64], kept: in
 
     posterior = bench.posterior(name)
     flat = draws.reshape(-1, draws.shape[-1])
-    zeta, _ = posterior.zeta(flat, 1e-5)
+    zeta, _ = posterior.zeta(flat)
     loglik = posterior.noise.loglik(flat, zeta, posterior.observed)[:, posterior.fitted]
     shape = draws.shape[:2]
     terms = loglik.reshape(*shape, -1)

@@ -1,5 +1,6 @@
 """Variants: every admissible wiring of a mechanism, their nesting, loops and claims."""
 
+from ruleout.variants.alternatives import alternatives
 from ruleout.variants.types import (
     ClaimSplit,
     Contest,
@@ -19,5 +20,6 @@ __all__ = [
     "Variant",
     "VariantSet",
     "Wiring",
+    "alternatives",
     "expand",
 ]

@@ -3,10 +3,12 @@
 from ruleout.verdicts.claims import ClaimVerdict, judge_claim
 from ruleout.verdicts.coherence import KEPT, NOT_JUDGED, RULED_OUT, Own, Verdict, settle
 from ruleout.verdicts.reasons import reason, where_it_shows
+from ruleout.verdicts.small_samples import FEW_POINTS, corrected_aic, separated
 from ruleout.verdicts.types import COLUMNS, Judgement
 
 __all__ = [
     "COLUMNS",
+    "FEW_POINTS",
     "KEPT",
     "NOT_JUDGED",
     "RULED_OUT",
@@ -14,8 +16,10 @@ __all__ = [
     "Judgement",
     "Own",
     "Verdict",
+    "corrected_aic",
     "judge_claim",
     "reason",
+    "separated",
     "settle",
     "where_it_shows",
 ]

@@ -94,7 +94,9 @@ def _statement(
                 f"{', '.join(without_kept)}."
             )
         case "nothing_fits":
-            return "Nothing fits: every variant is ruled out, so the list of mechanisms falls short."
+            return (
+                "Nothing fits: every variant is ruled out, so the list of mechanisms falls short."
+            )
     waiting = [v for v in order if verdicts[v] not in (KEPT, RULED_OUT)]
     if waiting:
         return f"Undecided: {', '.join(waiting)} could not be judged."
