@@ -100,17 +100,8 @@ def _draw_panel(axes: Axes, panel: Panel, styles: Mapping[str, tuple[str, str]])
         red = VERDICT_COLOURS["ruled_out"]
         for spine in axes.spines.values():
             spine.set(visible=True, color=red, linewidth=1.0)
-        axes.text(
-            0.97,
-            0.95,
-            f"{VERDICT_SIGNS['ruled_out']} fails: {', '.join(panel.fails)}",
-            transform=axes.transAxes,
-            ha="right",
-            va="top",
-            fontsize=6,
-            color=red,
-            bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.8, "alpha": 0.85},
-        )
+        failed = f"{VERDICT_SIGNS['ruled_out']} {', '.join(panel.fails)}"
+        axes.set_title(failed, loc="right", pad=3, color=red, fontsize=6)
 
 
 def _draw_band(axes: Axes, curve: pd.DataFrame, colour: str) -> None:

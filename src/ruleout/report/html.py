@@ -31,6 +31,7 @@ from ruleout.report.words import (
     number_text,
     p_text,
     split_names,
+    why,
 )
 from ruleout.verdicts.types import Judgement
 
@@ -127,6 +128,7 @@ def html_report(judgement: Judgement, case: Case) -> str:
         {
             **row,
             "edges": split_names(row["edges"]),
+            "why": why(row),
             "flags": split_names(row["flags"]),
             "graph": stamps.draw(choices_of(row["choices"]), _graph_label(row["edges"])),
         }

@@ -52,7 +52,7 @@ def _cells(row: pd.Series) -> list[str]:
     edges = ", ".join(escape(name) for name in split_names(row["edges"])) or "none"
     loo = "--"
     if pd.notna(row["loo_difference"]):
-        loo = f"${number_text(row['loo_difference'])} \\pm {number_text(row['loo_se'])}$"
+        loo = f"${number_text(row['loo_difference'], 2)} \\pm {number_text(row['loo_se'], 2)}$"
     why = escape(check_words(row["decisive_check"])) if row["decisive_check"] else "--"
     return [
         escape(row["variant"]),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Any, Final
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -70,9 +70,17 @@ def p_text(p: float) -> str:
     return f"{p:.2f}" if p >= 0.095 else f"{p:.2g}"
 
 
-def number_text(value: float) -> str:
-    """Return a number to three significant digits, or a dash where there is none."""
-    return "–" if value is None or math.isnan(value) else f"{value:.3g}"
+def number_text(value: float, digits: int = 3) -> str:
+    """Return a number to some significant digits, or a dash where there is none."""
+    return "–" if value is None or math.isnan(value) else f"{value:.{digits}g}"
+
+
+def why(row: Mapping[str, Any]) -> str:
+    """Return the reason for a variant's verdict, also where no check decided it."""
+    if row["reason"] or row["verdict"] != "kept":
+        return str(row["reason"])
+    checked = not math.isnan(row["p_value"])
+    return "No check speaks against it." if checked else "Not checked on its own."
 
 
 def split_names(cell: object) -> list[str]:

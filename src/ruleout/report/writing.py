@@ -79,7 +79,7 @@ def write_figures(
         tell.advance(step)
         for variant in drawn:
             save_figure(fit_figure(judgement, variant), folder, f"fit_{variant}")
-            tell.advance(step, note=variant)
+            tell.advance(step)
     tell.finish(step)
 
 
