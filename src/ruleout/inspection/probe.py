@@ -101,7 +101,8 @@ def planned_points(experiments: Experiments) -> Points:
     return _points(rows, held_out)
 
 
-def _event_times(condition: Condition) -> Iterable[float]:
+def event_times(condition: Condition) -> Iterable[float]:
+    """Yield every time at which a condition changes something; some are ``ALWAYS``."""
     for course in condition.inputs.values():
         yield from course.times
     for changes in (*condition.change.values(), *condition.add.values()):
@@ -124,7 +125,7 @@ def make_probe(
         points = planned_points(experiments)
         predict = Predictor(model, experiments, parameters, points)
     conditions = [experiments.conditions[c] for c in dict.fromkeys(points.condition)]
-    events = [t for c in conditions for t in _event_times(c) if isfinite(t)]
+    events = [t for c in conditions for t in event_times(c) if isfinite(t)]
     noise = [
         name.split("@")[0].rpartition(".")[2] in NOISE_KINDS for name in parameters.space.names
     ]
