@@ -9,6 +9,7 @@ from typing import Annotated
 import typer
 
 from ruleout import __version__
+from ruleout.cli.exchanging import register as register_exchange
 from ruleout.cli.guard import guarded
 
 app = typer.Typer(
@@ -157,3 +158,6 @@ def doctor() -> None:
 
     with guarded():
         raise typer.Exit(run_doctor())
+
+
+register_exchange(app)
