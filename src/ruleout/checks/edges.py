@@ -4,6 +4,10 @@ For every neighbour N of a variant V the objective (-2 log posterior) of V's ref
 that of N, fitted to the same data by a fixed, deterministic search that starts at V's refit. It is
 a function of the data alone, so replicates calibrate it whatever its distribution: near no-effect,
 with bounds, or for rival choices that nest nothing.
+
+A rival that does not contain V may fit best far from V's parameters. For it the search starts from
+an anchor too: the optimum of a global search on a data set drawn from V's best fit, and so as fair
+to the replicates as to the data.
 """
 
 from __future__ import annotations
@@ -15,9 +19,11 @@ from numpy.typing import NDArray
 from scipy.stats import qmc
 
 from ruleout.checks.statistics import Column
-from ruleout.fitting import Posterior, Sample, descend
+from ruleout.fitting import Posterior, Sample, SearchEffort, descend, search
 
 Array = NDArray[np.float64]
+Anchors = Mapping[str, Array]
+ANCHOR_EFFORT = SearchEffort(screened=128, starts=8, rounds=0)
 SCREENED = 16
 STARTS = 3
 ITERATIONS = 8
@@ -40,7 +46,26 @@ class Edges:
         self._space = posterior.space
         self.columns = tuple(Column(f"edge:{name}", counts=True) for name in neighbours)
 
-    def __call__(self, q: Array, objective: Array, sample: Sample) -> Array:
+    def anchors(self, posterior: Posterior, best: Array, seed: np.random.SeedSequence) -> Anchors:
+        """Return for every rival the optimum of a global search on data drawn from ``best``.
+
+        A neighbour with all of the variant's parameters and more needs none.
+        """
+        own = set(self._space.names)
+        draw_seed, search_seed = seed.spawn(2)
+        zeta, _ = posterior.zeta(best[None])
+        generator = np.random.default_rng(draw_seed)
+        data = posterior.noise.draw(best[None], zeta, posterior.observed, [generator])
+        found: dict[str, Array] = {}
+        for group in self._neighbours:
+            for rival in group:
+                if not own < set(rival.space.names):
+                    end = search(rival, ANCHOR_EFFORT, search_seed, data=data)
+                    if np.isfinite(end.objective[0]):
+                        found[rival.model.variant.name] = end.q[0]
+        return found
+
+    def __call__(self, q: Array, objective: Array, sample: Sample, anchors: Anchors) -> Array:
         """Return the fall of the objective per choice, (B, number of choices).
 
         Parameters
@@ -51,14 +76,22 @@ class Edges:
             Their objectives.
         sample : Sample
             The data they were fitted to, one row per refit.
+        anchors : mapping of variant to (D',) array
         """
         falls = [
-            np.max([self._fall(n, q, objective, sample) for n in group], axis=0)
+            np.max([self._fall(n, q, objective, sample, anchors) for n in group], axis=0)
             for group in self._neighbours
         ]
         return np.stack(falls, axis=1) if falls else np.zeros((len(q), 0))
 
-    def _fall(self, neighbour: Posterior, q: Array, objective: Array, sample: Sample) -> Array:
+    def _fall(
+        self,
+        neighbour: Posterior,
+        q: Array,
+        objective: Array,
+        sample: Sample,
+        anchors: Anchors,
+    ) -> Array:
         starts = self._embed(neighbour, q)
         rows, candidates, d = starts.shape
         if candidates > 1:
@@ -69,6 +102,9 @@ class Edges:
             screened = neighbour.objective(flat, zeta, wide).reshape(rows, candidates)
             best = np.argsort(screened, axis=1, kind="stable")[:, :STARTS]
             starts = np.take_along_axis(starts, best[:, :, None], axis=1)
+        anchor = anchors.get(neighbour.model.variant.name)
+        if anchor is not None:
+            starts = np.concatenate([starts, np.broadcast_to(anchor, (rows, 1, d))], axis=1)
         each = starts.shape[1]
         ends = descend(
             neighbour,

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from ruleout.checks.edges import Edges
+from ruleout.checks.edges import Anchors, Edges
 from ruleout.checks.statistics import Column, Statistics
 from ruleout.fitting import Posterior, Sample, descend
 
@@ -53,31 +53,39 @@ class Checker:
         self.columns: tuple[Column, ...] = self._edges.columns + self._statistics.columns
         self.counting: NDArray[np.intp] = np.flatnonzero([c.counts for c in self.columns])
 
-    def evaluate(self, q: Array, sample: Sample, uniform: Array) -> Evaluated:
+    def anchors(self, best: Array, seed: np.random.SeedSequence) -> Anchors:
+        """Return where searches of rival neighbours start, given the variant's best fit (D,)."""
+        return self._edges.anchors(self.posterior, best, seed)
+
+    def evaluate(self, q: Array, sample: Sample, uniform: Array, anchors: Anchors) -> Evaluated:
         """Refit each row's data from ``q`` and return the statistics at the refit."""
         refit = descend(
             self.posterior, q, sample, tolerance=REFIT_TOLERANCE, iterations=REFIT_ITERATIONS
         )
         zeta, _ = self.posterior.zeta(refit.q)
-        edges = self._edges(refit.q, refit.objective, sample)
+        edges = self._edges(refit.q, refit.objective, sample, anchors)
         others = self._statistics(refit.q, zeta, sample, uniform)
         values = np.concatenate([edges, others], axis=1)
         values[~np.isfinite(refit.objective)] = np.nan
         return Evaluated(values, refit.q, refit.objective)
 
-    def observed(self, q: Array, seed: np.random.SeedSequence) -> Evaluated:
+    def observed(self, q: Array, seed: np.random.SeedSequence, anchors: Anchors) -> Evaluated:
         """Return the statistics of the data, refitted from the best fit ``q`` (D,)."""
         sample = self.posterior.observed
         uniform = np.random.default_rng(seed).uniform(size=sample.z.shape)
-        return self.evaluate(q[None], sample, uniform)
+        return self.evaluate(q[None], sample, uniform, anchors)
 
-    def replicated(self, draws: Array, seeds: Sequence[np.random.SeedSequence]) -> Evaluated:
+    def replicated(
+        self, draws: Array, seeds: Sequence[np.random.SeedSequence], anchors: Anchors
+    ) -> Evaluated:
         """Return the statistics of one replicate per posterior draw, each on its own stream.
 
         Parameters
         ----------
         draws : (B, D) array
         seeds : B seed sequences
+        anchors : mapping
+            As for the data.
         """
         generators = [np.random.default_rng(seed) for seed in seeds]
         zeta, _ = self.posterior.zeta(draws)
@@ -89,6 +97,6 @@ class Checker:
             chosen = [generators[i] for i in at]
             sample = self.posterior.noise.draw(draws[at], zeta[at], self.posterior.observed, chosen)
             uniform = np.stack([g.uniform(size=zeta.shape[1]) for g in chosen])
-            found = self.evaluate(draws[at], sample, uniform)
+            found = self.evaluate(draws[at], sample, uniform, anchors)
             values[at], q[at], objective[at] = found.values, found.q, found.objective
         return Evaluated(values, q, objective)

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from scipy.stats import qmc
 
 from ruleout.fitting.descent import descend
+from ruleout.fitting.observations import Sample
 from ruleout.fitting.posterior import Posterior
 
 Array = NDArray[np.float64]
@@ -61,7 +62,9 @@ class Search:
         return self.agree >= 2 and bool(np.isfinite(self.objective[0]))
 
 
-def _screen(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequence) -> Array:
+def _screen(
+    posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequence, data: Sample
+) -> Array:
     """Return start points: half the best of a Sobol screen, half spread over the rest."""
     space = posterior.space
     sobol = qmc.Sobol(space.dimension, rng=np.random.default_rng(seed))
@@ -70,7 +73,6 @@ def _screen(posterior: Posterior, effort: SearchEffort, seed: np.random.SeedSequ
     bounded = np.isfinite(space.low)
     q = space.quantile(np.where(bounded, u, 0.05 + 0.9 * u))
     zeta, _ = posterior.zeta(q, posterior.sampling_rtol)
-    data = posterior.observed
     profiled = posterior.noise.profile(q, zeta, data, posterior.fitted)
     objective = posterior.objective(profiled, zeta, data)
     order = np.argsort(objective, kind="stable")
@@ -87,8 +89,9 @@ def search(
     effort: SearchEffort,
     seed: np.random.SeedSequence,
     known: Array | None = None,
+    data: Sample | None = None,
 ) -> Search:
-    """Find the best fit of ``posterior`` to the observed data.
+    """Find the best fit of ``posterior`` to its data.
 
     Starts are scattered over the prior, screened, and descended from by Levenberg-Marquardt;
     rounds of new starts follow until two agree on the best objective.
@@ -100,28 +103,29 @@ def search(
     seed : SeedSequence
     known : (K, D) array, optional
         Further starts of the first round, such as a truth that the data were simulated from.
+    data : Sample, optional
+        One data set to fit instead of the observed one.
     """
+    data = data or posterior.observed
     d = posterior.space.dimension
     if d == 0:
         zeta, _ = posterior.zeta(np.zeros((1, 0)))
-        only = posterior.objective(np.zeros((1, 0)), zeta, posterior.observed)
+        only = posterior.objective(np.zeros((1, 0)), zeta, data)
         return Search(np.zeros((1, 0)), only, 2, 1)
     ends = np.zeros((0, d))
     objectives = np.zeros(0)
     started = 0
     agree = 0
     for number, child in enumerate(seed.spawn(1 + effort.rounds)):
-        starts = _screen(posterior, effort, child)
+        starts = _screen(posterior, effort, child, data)
         if number == 0 and known is not None:
             starts = np.concatenate([known, starts])
         if len(starts):
             # A coarse descent of all, then a fine one of those that may still win.
-            coarse = descend(posterior, starts, posterior.observed, tolerance=0.1, iterations=25)
+            coarse = descend(posterior, starts, data, tolerance=0.1, iterations=25)
             order = np.argsort(coarse.objective, kind="stable")
             leading = order[: max(4, len(order) // 3)]
-            fine = descend(
-                posterior, coarse.q[leading], posterior.observed, tolerance=1e-4, iterations=60
-            )
+            fine = descend(posterior, coarse.q[leading], data, tolerance=1e-4, iterations=60)
             q, value = coarse.q.copy(), coarse.objective.copy()
             q[leading], value[leading] = fine.q, fine.objective
             started += len(starts)

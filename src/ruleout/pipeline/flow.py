@@ -261,13 +261,21 @@ class Flow:
         checker = self.bench.checker(name)
         columns, counting = checker.columns, checker.counting
         decisive_columns = tuple(columns[j] for j in counting)
-        observed = (
-            await self.piece(
-                f"{name}/observed", fingerprint, tasks.observed_statistics, name, fit.best, seed
-            )
-        )["values"][0]
+        anchors = await self.piece(
+            f"{name}/anchors", fingerprint, tasks.rival_anchors, name, fit.best, seed
+        )
+        found = await self.piece(
+            f"{name}/observed",
+            fingerprint,
+            tasks.observed_statistics,
+            name,
+            fit.best,
+            anchors,
+            seed,
+        )
+        observed = found["values"][0]
         pilot_draws = fit.draws(generator(seed, name, "pilot draws"), effort.pilot)
-        pilot, _ = await self._replicates(name, fingerprint, pilot_draws, "pilot")
+        pilot, _ = await self._replicates(name, fingerprint, pilot_draws, anchors, "pilot")
         if not len(counting):
             return Checks(columns, observed, pilot, None, None, 0.0)
         if len(pilot) < effort.pilot // 2 or not np.isfinite(observed).all():
@@ -282,7 +290,7 @@ class Flow:
         while outcome is None and asked < most:
             ahead = BATCH if asked == 0 else min(4 * BATCH, most - asked)
             fresh, lost = await self._replicates(
-                name, fingerprint, draws[asked : asked + ahead], "replicate", asked
+                name, fingerprint, draws[asked : asked + ahead], anchors, "replicate", asked
             )
             asked += ahead
             failed += lost
@@ -304,7 +312,13 @@ class Flow:
         )
 
     async def _replicates(
-        self, name: str, fingerprint: str, draws: Array, purpose: str, first: int = 0
+        self,
+        name: str,
+        fingerprint: str,
+        draws: Array,
+        anchors: Arrays,
+        purpose: str,
+        first: int = 0,
     ) -> tuple[Array, int]:
         """Return the statistics of replicates whose integration succeeded, and how many failed."""
         parts = await asyncio.gather(
@@ -315,6 +329,7 @@ class Flow:
                     tasks.replicate_statistics,
                     name,
                     draws[i : i + BATCH],
+                    anchors,
                     purpose,
                     first + i,
                     self.settings.seed,

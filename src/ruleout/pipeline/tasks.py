@@ -150,11 +150,16 @@ def polish(bench: Workbench, name: str, found: Arrays, leading: NDArray[np.float
     }
 
 
+def rival_anchors(bench: Workbench, name: str, best: NDArray[np.float64], seed: int) -> Arrays:
+    """Find where searches of the variant's rivals start, by rival."""
+    return dict(bench.checker(name).anchors(best, sequence(seed, name, "anchors")))
+
+
 def observed_statistics(
-    bench: Workbench, name: str, best: NDArray[np.float64], seed: int
+    bench: Workbench, name: str, best: NDArray[np.float64], anchors: Arrays, seed: int
 ) -> Arrays:
     """Evaluate every statistic on the data."""
-    found = bench.checker(name).observed(best, sequence(seed, name, "observed"))
+    found = bench.checker(name).observed(best, sequence(seed, name, "observed"), anchors)
     return {"values": found.values, "objective": found.objective}
 
 
@@ -162,13 +167,14 @@ def replicate_statistics(
     bench: Workbench,
     name: str,
     draws: NDArray[np.float64],
+    anchors: Arrays,
     purpose: str,
     first: int,
     seed: int,
 ) -> Arrays:
     """Evaluate every statistic on one replicate per draw; streams are numbered from ``first``."""
     seeds = [sequence(seed, name, purpose, first + i) for i in range(len(draws))]
-    found = bench.checker(name).replicated(draws, seeds)
+    found = bench.checker(name).replicated(draws, seeds, anchors)
     return {"values": found.values}
 
 
