@@ -122,6 +122,47 @@ def inspect(
 
 
 @app.command()
+def survey(
+    family: Annotated[
+        Path, typer.Argument(metavar="FAMILY", help="A family file (TOML).", show_default=False)
+    ],
+    out: Annotated[
+        Path | None,
+        typer.Option(metavar="DIR", help="Folder for the results.", show_default="reports/FAMILY"),
+    ] = None,
+    seed: Seed = 1,
+    sets: Annotated[
+        int | None,
+        typer.Option(min=1, help="Parameter sets per topology.", show_default="as in FAMILY"),
+    ] = None,
+    sample: Annotated[
+        int | None,
+        typer.Option(min=1, help="Survey this many topologies at random.", show_default="all"),
+    ] = None,
+    workers: Annotated[
+        int | None, typer.Option(min=1, help="Processes to use.", show_default="all cores")
+    ] = None,
+    log: LogOption = Log.text,
+) -> None:
+    """Ask which wirings of a family show a behaviour, and what they have in common."""
+    from ruleout.cli.judging import cores
+    from ruleout.cli.surveying import run_survey
+
+    out = out or Path("reports") / family.stem
+    kept = f"Finished topologies are kept in {out}; give the same command again to go on."
+    with guarded(kept):
+        run_survey(
+            family,
+            out=out,
+            seed=seed,
+            sets=sets,
+            sample=sample,
+            workers=workers or cores(),
+            as_json=log is Log.json,
+        )
+
+
+@app.command()
 def new(
     folder: Annotated[
         Path, typer.Argument(metavar="DIR", help="Folder to make.", show_default=False)

@@ -13,7 +13,8 @@ from ruleout.errors import InputError
 NOT_FULLY_JUDGED = 3
 
 
-def _cores() -> int:
+def cores() -> int:
+    """Return the number of cores this process may use."""
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
@@ -61,7 +62,7 @@ def run_judge(
     from ruleout.pipeline import Settings, judge
     from ruleout.report import write_report
 
-    settings = Settings(seed=seed, effort=effort, alpha=alpha, workers=workers or _cores())
+    settings = Settings(seed=seed, effort=effort, alpha=alpha, workers=workers or cores())
     with shown_progress(as_json=as_json) as progress:
         judgement = judge(case, settings, out=out, progress=progress)
         write_report(judgement, case, out, progress=progress)

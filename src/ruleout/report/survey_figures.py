@@ -30,6 +30,11 @@ def of_behaviour(table: pd.DataFrame, behaviour: str) -> pd.DataFrame:
     return table[table["behaviour"] == behaviour]
 
 
+def records(table: pd.DataFrame) -> list[dict[str, Any]]:
+    """Return the rows of a table by column name."""
+    return [{str(k): v for k, v in row.items()} for row in table.to_dict("records")]
+
+
 def best_first(survey: Survey, behaviour: str) -> pd.DataFrame:
     """Return the working topologies, the most robust first."""
     rows = of_behaviour(survey.topologies, behaviour)
@@ -51,7 +56,7 @@ def atlas_figure(survey: Survey, family: Family, behaviour: str) -> Figure | Non
     tall = max(p.size[1] for p in pictures) * scale + 7.0
     count = -(-len(pictures) // columns)
     figure = Figure(figsize=(columns * width * MM, count * tall * MM))
-    for k, (picture, row) in enumerate(zip(pictures, rows.itertuples(), strict=True)):
+    for k, (picture, row) in enumerate(zip(pictures, records(rows), strict=True)):
         line, column = divmod(k, columns)
         left = column * width + (width - picture.size[0] * scale) / 2
         axes = graph_axes(figure, picture, left, line * tall + 4.5, scale)
@@ -59,7 +64,7 @@ def atlas_figure(survey: Survey, family: Family, behaviour: str) -> Figure | Non
         figure.text(
             (column + 0.5) / columns,
             1 - (line * tall + 1.0) / (count * tall),
-            f"{percent(row.robustness)} ({percent(row.low)} to {percent(row.high)})",
+            f"{percent(row['robustness'])} ({percent(row['low'])} to {percent(row['high'])})",
             ha="center",
             va="top",
             fontsize=5.5,

@@ -37,7 +37,8 @@ def map_figure(survey: Survey, behaviour: str) -> Figure | None:
         ]
     ).reshape(-1, 2)
     edges = rows["n_edges"].to_numpy(int)
-    at = np.column_stack([_across(edges, pairs), edges])
+    across = _across(edges, pairs)
+    at = np.column_stack([across, edges + _lanes(edges, across)])
     levels = np.unique(edges)
     figure = Figure(figsize=(PAGE * MM, (22 + 17 * len(levels)) * MM), layout="constrained")
     axes = figure.add_subplot()
@@ -83,6 +84,16 @@ def _across(edges: NDArray[np.int64], pairs: NDArray[np.int64]) -> NDArray[np.fl
             mean = np.array([np.mean(x[near[k]]) if near[k] else x[k] for k in mine])
             x[mine[np.argsort(mean, kind="stable")]] = _spread(len(mine))
     return x
+
+
+def _lanes(edges: NDArray[np.int64], across: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return small shifts in turn, so that links within a row do not lie on each other."""
+    shift = np.zeros(len(edges))
+    for level in np.unique(edges):
+        mine = np.flatnonzero(edges == level)
+        mine = mine[np.argsort(across[mine], kind="stable")]
+        shift[mine] = 0.16 * (np.array([0, 2, -1, 1, -2])[np.arange(len(mine)) % 5])
+    return shift
 
 
 def _spread(count: int) -> NDArray[np.float64]:

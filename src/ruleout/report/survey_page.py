@@ -21,6 +21,7 @@ from ruleout.report.survey_figures import (
     features_figure,
     of_behaviour,
     ranking_figure,
+    records,
     traces_figure,
 )
 from ruleout.report.survey_map import map_figure
@@ -146,7 +147,7 @@ def _principles(
     groups = []
     for kind, words in KINDS.items():
         rows = []
-        for row in table[table["kind"] == kind].to_dict("records"):
+        for row in records(table[table["kind"] == kind]):
             exceptions = [t for t in str(row["counterexample_list"]).split(";") if t]
             bounded = pd.notna(row["bound"])
             rows.append(
@@ -205,13 +206,13 @@ def survey_latex(survey: Survey) -> str:
             r"Edges & Shown & Robustness & Exact interval \\",
             r"\midrule",
         ]
-        for row in rows.itertuples():
-            edges = _arrows(row.edges)
+        for row in records(rows):
+            edges = _arrows(row["edges"])
             cells = (
                 edges,
-                f"{row.shown}/{row.judged}",
-                escape(percent(row.robustness)),
-                f"{escape(percent(row.low))} to {escape(percent(row.high))}",
+                f"{row['shown']}/{row['judged']}",
+                escape(percent(row["robustness"])),
+                f"{escape(percent(row['low']))} to {escape(percent(row['high']))}",
             )
             lines.append(" & ".join(cells) + r" \\")
         lines += [r"\bottomrule", r"\end{tabular}", r"\end{table}"]

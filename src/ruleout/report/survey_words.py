@@ -43,5 +43,8 @@ def headline(survey: Survey, behaviour: str) -> str:
         )
     if found["not_judged_sets"]:
         share = found["not_judged_sets"] / (meta["surveyed"] * meta["sets"])
-        text += f" {percent(share)} of the solves failed and count neither way."
+        text += (
+            f" In {percent(share)} of the sets the flow did not settle or a solve failed; they "
+            "count neither way."
+        )
     return text

@@ -22,6 +22,8 @@ from ruleout.survey.systems import Member
 from ruleout.survey.types import Settings, Signs, Survey
 
 Flags = NDArray[np.bool_]
+TRACED = 12
+"""Topologies whose best set is drawn, for each behaviour."""
 LISTED = 10
 """Counterexamples named in the table of principles; all are in the table of topologies."""
 
@@ -79,7 +81,7 @@ def tabulate(
         class_sizes(signs, symmetries(family)) if family.relabelled else np.ones(len(signs), int)
     )
     features = find_features(family, signs)
-    topologies, shares, principles, examples, links = [], [], [], [], []
+    topologies, shares, principles, examples, traces, links = [], [], [], [], [], []
     summary = {}
     for h, behaviour in enumerate(source.behaviours):
         shown, judged = counts.shown[:, h], counts.judged[:, h]
@@ -108,6 +110,7 @@ def tabulate(
         shares.append(feature_table(behaviour.name, features, works, shown))
         principles.append(_principle_table(behaviour, features, works, counts, h, names, settings))
         examples.append(_example_table(source, counts, h, works, names))
+        traces.append(_trace_table(source, counts, h, works, names))
         pairs = find_links(signs, works)
         links.append(
             pd.DataFrame(
@@ -129,6 +132,7 @@ def tabulate(
         features=pd.concat(shares, ignore_index=True),
         principles=pd.concat(principles, ignore_index=True),
         examples=pd.concat(examples, ignore_index=True),
+        traces=pd.concat(traces, ignore_index=True),
         links=pd.concat(links, ignore_index=True),
         meta={**meta, "results": summary},
     )
@@ -260,3 +264,32 @@ def _example_table(
             )
     columns = ["topology", "behaviour", "set", *measures, "parameters"]
     return pd.DataFrame(rows, columns=columns)
+
+
+def _trace_table(
+    source: FamilyFile, counts: Counts, h: int, works: Flags, names: list[str]
+) -> pd.DataFrame:
+    """Return what the best set of each of the most robust topologies does."""
+    behaviour = source.behaviours[h]
+    share = np.nan_to_num(_share(counts.shown[:, h], counts.judged[:, h]))
+    parts = [pd.DataFrame(columns=["topology", "behaviour", "set", "line", "axis", "x", "output"])]
+    best_first = [t for t in np.argsort(-share, kind="stable") if works[t]]
+    for t in best_first[:TRACED]:
+        member = Member(source.family, counts.signs[t])
+        values = counts.values[t][h, :1, : len(member.parameters)]
+        trace = behaviour.trace(member.subject(values))
+        lines, points = trace.x.shape
+        parts.append(
+            pd.DataFrame(
+                {
+                    "topology": names[t],
+                    "behaviour": behaviour.name,
+                    "set": int(counts.example[t, h, 0]),
+                    "line": np.repeat(np.arange(lines), points),
+                    "axis": trace.axis,
+                    "x": trace.x.ravel(),
+                    "output": trace.output.ravel(),
+                }
+            )
+        )
+    return pd.concat(parts[1:] or parts, ignore_index=True)

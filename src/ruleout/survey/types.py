@@ -156,6 +156,9 @@ class Survey:
     examples : DataFrame
         The best sets of each working topology: ``topology``, ``behaviour``, ``set``, one column
         per measure of any behaviour, ``parameters`` (``NAME=value;...``).
+    traces : DataFrame
+        What the best sets of the most robust topologies do: ``topology``, ``behaviour``, ``set``,
+        ``line``, ``axis`` (time or input), ``x``, ``output``.
     links : DataFrame
         Pairs of working topologies that differ by one edge: ``behaviour``, ``topology``,
         ``other``.
@@ -167,5 +170,6 @@ class Survey:
     features: pd.DataFrame
     principles: pd.DataFrame
     examples: pd.DataFrame
+    traces: pd.DataFrame
     links: pd.DataFrame
     meta: Mapping[str, Any]

@@ -16,6 +16,7 @@ from typing import ClassVar, Final
 import numpy as np
 
 from ruleout.survey.behaviours.base import Array, Score, Subject, course, rest, unknown
+from ruleout.survey.behaviours.traces import Trace, step_trace
 
 TIMES: Final = np.concatenate([[0.0], np.geomspace(1e-3, 1e4, 57)])
 """Eight output times per decade; the top is then found on the parabola through three of them."""
@@ -73,6 +74,10 @@ class Adaptation:
         sensitivity[exact[solved]] = top_of(departure[solved]) / step
         shown = judged & (precision > self.precision) & (sensitivity > self.sensitivity)
         return Score(judged, shown, {"sensitivity": sensitivity, "precision": precision})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return the output around the step, for a subject of one parameter set."""
+        return step_trace(subject, self.before, self.after)
 
 
 def top_of(values: Array) -> Array:

@@ -4,13 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import ClassVar, Protocol
+from typing import TYPE_CHECKING, ClassVar, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ruleout.kernel import Program, Status
 from ruleout.kernel import Protocol as Course
+
+if TYPE_CHECKING:
+    from ruleout.survey.behaviours.traces import Trace
 
 Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
@@ -101,6 +104,10 @@ class Behaviour(Protocol):
 
     def score(self, subject: Subject) -> Score:
         """Return how each parameter set fares."""
+        ...
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return what to look at, for a subject of one parameter set."""
         ...
 
 

@@ -14,6 +14,7 @@ import numpy as np
 
 from ruleout.survey.behaviours.base import Score, Subject, unknown
 from ruleout.survey.behaviours.doses import sweep
+from ruleout.survey.behaviours.traces import Trace, dose_trace
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,3 +63,7 @@ class Hysteresis:
         width[shown] = (levels[1] / levels[0]) ** open_.sum(axis=1)[shown]
         size = np.where(judged, np.max(np.where(np.isnan(gap), 0.0, gap), axis=1), np.nan)
         return Score(judged, shown, {"width": width, "gap": size})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return the steady output over the input, for a subject of one parameter set."""
+        return dose_trace(subject, self.low, self.high, down=True)

@@ -14,6 +14,7 @@ from typing import ClassVar
 import numpy as np
 
 from ruleout.survey.behaviours.base import Array, Score, Subject, rest
+from ruleout.survey.behaviours.traces import Trace, flow_trace
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,6 +71,12 @@ class Multistability:
         with np.errstate(all="ignore"):
             fold = np.where(shown, high / np.maximum(low, 1e-9), np.nan)
         return Score(judged, shown, {"states": number.astype(float), "fold": fold})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return flows from scattered starts, for a subject of one parameter set."""
+        p = subject.p if subject.source is None else subject.at_input(self.level)
+        starts = scattered(8, len(subject.start)) * subject.ceiling
+        return flow_trace(subject, p, starts, 50.0)
 
 
 def scattered(count: int, dimension: int) -> Array:

@@ -24,6 +24,7 @@ from ruleout.survey.behaviours.base import (
     rest,
     unknown,
 )
+from ruleout.survey.behaviours.traces import Trace, flow_trace
 
 SAMPLES: Final = 385
 """Output times of a window."""
@@ -74,9 +75,7 @@ class Oscillation:
         shown = np.zeros(count, dtype=bool)
         amplitude, period = unknown(count), unknown(count)
         live = np.flatnonzero(~judged)
-        # Nodes started alike may lie on a line that leads into an unstable state.
-        uneven = 1.0 + 0.1 * np.arange(len(subject.start))
-        y = np.broadcast_to(subject.start * uneven, (count, len(uneven))).copy()
+        y = np.tile(_uneven(subject), (count, 1))
         length = np.zeros(count, dtype=np.int64)
         times = [np.linspace(0.0, SHORTEST * 2.0**k, SAMPLES) for k in range(LENGTHS)]
         courses = [plain_course(subject, t) for t in times]
@@ -108,6 +107,20 @@ class Oscillation:
             going = ~(sustained | flat) & (length[live] >= 0) & (length[live] < LENGTHS)
             live = live[going]
         return Score(judged, shown, {"amplitude": amplitude, "period": period})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return twelve periods from the start on, for a subject of one parameter set."""
+        p = subject.p if subject.source is None else subject.at_input(self.level)
+        period = self.score(subject).measures["period"][0]
+        return flow_trace(subject, p, _uneven(subject)[None], 12.0 * period)
+
+
+def _uneven(subject: Subject) -> Array:
+    """Return the start with its nodes set apart.
+
+    Nodes started alike may lie on a line that leads into an unstable state.
+    """
+    return np.asarray(subject.start * (1.0 + 0.1 * np.arange(len(subject.start))))
 
 
 @dataclass(frozen=True, slots=True, eq=False)

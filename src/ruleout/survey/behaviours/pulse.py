@@ -15,6 +15,7 @@ import numpy as np
 
 from ruleout.survey.behaviours.adaptation import TIMES, top_of
 from ruleout.survey.behaviours.base import Score, Subject, course, rest, unknown
+from ruleout.survey.behaviours.traces import Trace, step_trace
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,3 +65,7 @@ class Pulse:
             back[rows] = (rise - (last[:, subject.output] - start)) / rise
         shown = judged & (height >= self.height) & (back >= self.back)
         return Score(judged, shown, {"height": height, "back": back})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return the output around the step, for a subject of one parameter set."""
+        return step_trace(subject, self.before, self.after)

@@ -15,6 +15,7 @@ import numpy as np
 
 from ruleout.survey.behaviours.base import Array, Score, Subject, first_crossing, unknown
 from ruleout.survey.behaviours.doses import sweep
+from ruleout.survey.behaviours.traces import Trace, dose_trace
 
 _FINE = 33
 
@@ -75,6 +76,10 @@ class Switch:
             middle[rows] = ec[1]
         shown = judged & (steep > self.hill)
         return Score(judged, shown, {"hill_coefficient": steep, "ec50": middle, "swing": swing})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return the steady output over the input, for a subject of one parameter set."""
+        return dose_trace(subject, self.low, self.high)
 
     def _dose(
         self, subject: Subject, states: Array, way: Array, base: Array, change: Array, share: float

@@ -28,6 +28,7 @@ from ruleout.survey.behaviours.base import (
     rest,
     unknown,
 )
+from ruleout.survey.behaviours.traces import Trace, step_trace
 
 _COARSE: Final = np.concatenate([[0.0], np.geomspace(1e-4, 1e4, 65)])
 _FINE: Final = 33
@@ -110,6 +111,10 @@ class Acceleration:
         ratio = times * _loss(subject) / np.log(2.0)
         return Score(judged, judged & (ratio < self.ratio), {"response_ratio": ratio})
 
+    def trace(self, subject: Subject) -> Trace:
+        """Return the output around the step, for a subject of one parameter set."""
+        return step_trace(subject, self.before, self.after)
+
 
 @dataclass(frozen=True, slots=True)
 class Delay:
@@ -151,3 +156,7 @@ class Delay:
         longer = np.maximum(delay_on, delay_off)
         shown = judged & (apart > self.delay) & (longer > self.delay)
         return Score(judged, shown, {"delay": apart, "delay_on": delay_on, "delay_off": delay_off})
+
+    def trace(self, subject: Subject) -> Trace:
+        """Return the output around the step, for a subject of one parameter set."""
+        return step_trace(subject, self.before, self.after)
