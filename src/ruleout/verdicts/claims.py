@@ -15,6 +15,7 @@ NEEDED, NOT_NEEDED, EXCLUDED, UNDECIDED, NOTHING_FITS = (
     "undecided",
     "nothing_fits",
 )
+CLAIM_VERDICTS = (NEEDED, NOT_NEEDED, EXCLUDED, UNDECIDED, NOTHING_FITS)
 
 
 @dataclass(frozen=True, slots=True)
