@@ -1,0 +1,1 @@
+"""Error rates of the verdicts, measured on simulated data sets."""
