@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import shutil
 import subprocess
 import sys
 import time
@@ -191,14 +192,16 @@ def test_our_own_fault_returns_1_and_asks_for_a_report(
 
 
 def test_doses_bring_a_caution(
-    tmp_path: Path, capsys: pytest.CaptureFixture[str], judged: list[dict[str, Any]]
+    tmp_path: Path,
+    frost_folder: Path,
+    capsys: pytest.CaptureFixture[str],
+    judged: list[dict[str, Any]],
 ) -> None:
-    folder = tmp_path / "case"
-    write_new_case(folder)
+    folder = shutil.copytree(frost_folder, tmp_path / "case")
     with (folder / "experiments.toml").open("a") as file:
-        file.write("\n[condition.dosed]\nadd.product = [[0, 1.0]]\n")
+        file.write("\n[condition.dosed]\nadd.protectant = [[0, 1.0]]\n")
     with (folder / "data.csv").open("a") as file:
-        file.write("dosed,5,product,0.6\n")
+        file.write("dosed,5,protectant_level,0.6\n")
     assert main(["judge", str(folder), "--out", str(tmp_path / "run")]) == 0
     assert judged
     assert "treatment" in capsys.readouterr().out

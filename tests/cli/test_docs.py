@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 import shlex
+import shutil
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -76,9 +77,12 @@ def test_a_piece_of_a_mechanism_can_be_added_to_the_starting_case(
 
 @pytest.fixture
 def prepared(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, frost_judgement: Judgement
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+    frost_judgement: Judgement,
+    frost_folder: Path,
 ) -> Callable[[], Path]:
-    """Work in a folder with the starting case, with the long computation put aside."""
+    """Work in a folder with a judged case, with the long computation put aside."""
 
     def judge(case: Any, settings: Any = None, *, out: Path, **_: Any) -> Judgement:
         assert case.mechanism.title
@@ -88,7 +92,7 @@ def prepared(
 
     def prepare() -> Path:
         monkeypatch.chdir(tmp_path)
-        write_new_case(tmp_path / "first_case")
+        shutil.copytree(frost_folder, tmp_path / "first_case")
         case = read_case(tmp_path / "first_case")
         monkeypatch.setattr(ruleout.pipeline, "judge", judge)
         monkeypatch.setattr(ruleout.store, "load_judgement", lambda _: (frost_judgement, case))

@@ -17,10 +17,11 @@ from ruleout.report.fit_figure import checks_figure, fit_figure
 from ruleout.report.graph_figure import mechanism_figure
 from ruleout.report.layout import abbreviations, label_lines
 from ruleout.report.panels import panels_of
-from ruleout.report.picture import choices_of, inks, lay_out
+from ruleout.report.picture import inks, lay_out
 from ruleout.report.routing import bezier
 from ruleout.report.style import COLOURS, COLUMN, PAGE, condition_styles, figure_style
 from ruleout.report.table_figure import table_figure
+from ruleout.report.tables import choices_of, option_words, present_parts
 from ruleout.report.writing import save_figure
 from ruleout.verdicts.types import Judgement
 
@@ -155,6 +156,18 @@ def test_long_names_break_at_underscores() -> None:
 def test_choices_are_read_back_from_the_table() -> None:
     cell = "a=stimulates/hill;b=absent"
     assert choices_of(cell) == {"a": "stimulates/hill", "b": "absent"}
+
+
+def test_options_are_told_apart_by_what_differs() -> None:
+    cells = [
+        "there=inhibits/hill;sign=stimulates/hill;law=converts/linear;both=absent",
+        "there=absent;sign=inhibits/hill;law=converts/saturating;both=stimulates/hill",
+        "there=absent;sign=absent;law=converts/linear;both=inhibits/linear",
+    ]
+    words = option_words(cells)
+    assert present_parts(cells[0], words) == ["there", "sign (stimulates)", "law (linear)"]
+    assert present_parts(cells[1], words)[-1] == "both (stimulates, hill)"
+    assert list(words["law"].values()) == ["linear", "saturating"]
 
 
 def test_figures_have_the_widths_of_journals(frost_judgement: Judgement, frost_case: Any) -> None:

@@ -123,9 +123,9 @@ def test_sorting_by_p_is_by_number(opened: Any) -> None:
 def test_filters_by_contested_edge_and_verdict_combine_and_clear(opened: Any) -> None:
     from selenium.webdriver.common.by import By
 
-    choose(opened, "select[data-edge=protectant_on_kinase]", "with")
+    choose(opened, "select[data-of=protectant_on_kinase]", "present")
     assert set(shown_rows(opened)) == {"v3", "v5", "v7", "v8"}
-    choose(opened, "select[data-edge=cold_on_protectant]", "without")
+    choose(opened, "select[data-of=cold_on_protectant]", "absent")
     assert set(shown_rows(opened)) == {"v3", "v5"}
     choose(opened, "select[name=verdict]", "ruled_out")
     assert shown_rows(opened) == []

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, Final
 from rich.console import Console
 from rich.text import Text
 
-from ruleout.report.tables import records
+from ruleout.report.tables import option_words, present_parts, records
 from ruleout.report.words import (
     CLAIM_VERDICTS,
     KEPT_MEANS,
@@ -78,25 +78,29 @@ def print_variants(console: Console, variants: pd.DataFrame) -> None:
     name_width = max(7, *(len(v) for v in variants["variant"]))
     head = f"{'variant':<{name_width}}  {'verdict':<10}  {'p':>7}  {'free':>4}  contested, present"
     console.print(Text(head, style="bold"), soft_wrap=True)
+    words = option_words(variants["choices"])
     left = REASONS_SHOWN
     for row in records(by_verdict(variants)):
         ruled_out = row["verdict"] == "ruled_out"
         if ruled_out and left == 0:
             break
         left -= ruled_out
-        _print_variant(console, row, name_width)
+        _print_variant(console, row, present_parts(row["choices"], words), name_width)
     hidden = int((variants["verdict"] == "ruled_out").sum()) - REASONS_SHOWN
     if hidden > 0:
         print_wrapped(console, f"... and {hidden} more ruled out; variants.csv has them all.")
 
 
-def _print_variant(console: Console, row: Mapping[str, Any], name_width: int) -> None:
+def _print_variant(
+    console: Console, row: Mapping[str, Any], present: list[str], name_width: int
+) -> None:
     verdict = row["verdict"]
     before = f"{row['variant']:<{name_width}}  "
     after = f"  {p_text(row['p_value']):>7}  {row['free_parameters']:>4}  "
     used = len(before) + 10 + len(after)
-    edges = ", ".join(split_names(row["edges"])) or "none"
-    wrapped = textwrap.wrap(edges, max(_width(console) - used, 20), break_on_hyphens=False)
+    wrapped = textwrap.wrap(
+        ", ".join(present) or "none", max(_width(console) - used, 20), break_on_hyphens=False
+    )
     line = Text(before)
     line.append(f"{VERDICTS[verdict]:<10}", style=STYLES[verdict])
     line.append(after + wrapped[0])

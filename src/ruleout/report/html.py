@@ -15,10 +15,10 @@ from markupsafe import Markup
 from ruleout.report.charts import check_chart, fit_chart, marginal_chart
 from ruleout.report.fit_figure import conditions_in
 from ruleout.report.panels import panels_of, value_range
-from ruleout.report.picture import Picture, choices_of, lay_out
+from ruleout.report.picture import Picture, lay_out
 from ruleout.report.style import COLOURS, VERDICT_SIGNS, condition_styles
 from ruleout.report.svg import GraphSymbols
-from ruleout.report.tables import records
+from ruleout.report.tables import choices_of, option_words, present_parts, records
 from ruleout.report.words import (
     CLAIM_VERDICTS,
     DOSING_CAUTION,
@@ -124,13 +124,17 @@ def html_report(judgement: Judgement, case: Case) -> str:
     """
     picture, small = lay_out(case.mechanism), lay_out(case.mechanism, compact=True)
     stamps = GraphSymbols(small, "s")
+    words = option_words(judgement.variants["choices"])
     rows = [
         {
             **row,
-            "edges": split_names(row["edges"]),
+            "present": present_parts(row["choices"], words),
+            "chosen": [f"{n}={words[n][o]}" for n, o in choices_of(row["choices"]).items()],
             "why": why(row),
             "flags": split_names(row["flags"]),
-            "graph": stamps.draw(choices_of(row["choices"]), _graph_label(row["edges"])),
+            "graph": stamps.draw(
+                choices_of(row["choices"]), _graph_label(present_parts(row["choices"], words))
+            ),
         }
         for row in records(by_verdict(judgement.variants))
     ]
@@ -145,7 +149,7 @@ def html_report(judgement: Judgement, case: Case) -> str:
             f"Graph of {case.mechanism.title} with its contested parts dashed"
         ),
         letters=picture.letters,
-        contested=list(picture.letters),
+        options={name: list(found.values()) for name, found in words.items()},
         stamps=stamps.definitions(),
         evidence=evidence,
         left_out=left_out,
@@ -180,9 +184,8 @@ def _settings(meta: Mapping[str, Any]) -> list[tuple[str, Any]]:
     ]
 
 
-def _graph_label(edges: str) -> str:
-    present = ", ".join(split_names(edges))
-    return f"Graph with {present}" if present else "Graph without any contested edge"
+def _graph_label(present: list[str]) -> str:
+    return f"Graph with {', '.join(present)}" if present else "Graph without any contested part"
 
 
 def _abbreviated(picture: Picture) -> list[tuple[str, str]]:

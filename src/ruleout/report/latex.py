@@ -3,17 +3,18 @@
 from __future__ import annotations
 
 import re
-from typing import Final
+from collections.abc import Mapping
+from typing import Any, Final
 
 import pandas as pd
 
+from ruleout.report.tables import option_words, present_parts, records
 from ruleout.report.words import (
     VERDICTS,
     by_verdict,
     check_words,
     number_text,
     p_text,
-    split_names,
 )
 from ruleout.verdicts.types import Judgement
 
@@ -48,15 +49,15 @@ def escape(text: str) -> str:
     return re.sub(r"[^\x20-\x7e\u00a0-\u017f]", "?", escaped)
 
 
-def _cells(row: pd.Series) -> list[str]:
-    edges = ", ".join(escape(name) for name in split_names(row["edges"])) or "none"
+def _cells(row: Mapping[str, Any], words: Mapping[str, Mapping[str, str]]) -> list[str]:
+    present = ", ".join(map(escape, present_parts(row["choices"], words))) or "none"
     loo = "--"
     if pd.notna(row["loo_difference"]):
         loo = f"${number_text(row['loo_difference'], 2)} \\pm {number_text(row['loo_se'], 2)}$"
     why = escape(check_words(row["decisive_check"])) if row["decisive_check"] else "--"
     return [
         escape(row["variant"]),
-        edges,
+        present,
         str(row["free_parameters"]),
         p_text(row["p_value"]).replace("–", "--"),
         loo,
@@ -71,8 +72,9 @@ def latex_table(judgement: Judgement) -> str:
     It needs ``\usepackage{booktabs}``, and ``longtable`` from ``LONG`` rows on.
     """
     rows = by_verdict(judgement.variants)
-    lines = [" & ".join(_cells(row)) + r" \\" for _, row in rows.iterrows()]
-    head = r"Variant & Contested edges present & Par. & $p$ & $\Delta$LOO & Verdict & Decided by \\"
+    words = option_words(rows["choices"])
+    lines = [" & ".join(_cells(row, words)) + r" \\" for row in records(rows)]
+    head = r"Variant & Contested, present & Par. & $p$ & $\Delta$LOO & Verdict & Decided by \\"
     columns = (
         r"l>{\raggedright\arraybackslash}p{0.27\linewidth}rrrl"
         r">{\raggedright\arraybackslash}p{0.2\linewidth}"

@@ -5,8 +5,8 @@ from __future__ import annotations
 import sys
 from typing import TYPE_CHECKING, Any
 
-from ruleout.report.tables import records
-from ruleout.report.words import KEPT_MEANS, by_verdict, headline, split_names
+from ruleout.report.tables import option_words, present_parts, records
+from ruleout.report.words import KEPT_MEANS, by_verdict, headline
 
 if TYPE_CHECKING:
     from ruleout.verdicts.types import Judgement
@@ -19,8 +19,9 @@ def judgement_html(judgement: Judgement) -> str:
     """Return claims and variants of a judgement as HTML for a notebook's output."""
     from ruleout.report.html import environment
 
+    words = option_words(judgement.variants["choices"])
     rows = [
-        {**row, "edges": split_names(row["edges"])}
+        {**row, "present": present_parts(row["choices"], words)}
         for row in records(by_verdict(judgement.variants))
     ]
     template = environment().get_template("notebook.html")

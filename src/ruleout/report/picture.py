@@ -13,7 +13,6 @@ from ruleout.mechanism.types import Mechanism
 from ruleout.report.glyphs import head_of, outline, with_head
 from ruleout.report.layout import ROOMY, TIGHT, Point, place, points_and_pieces
 from ruleout.report.routing import Stroke, bezier, route
-from ruleout.report.words import split_names
 
 Array = NDArray[np.float64]
 Role = Literal["settled", "contested", "absent"]
@@ -114,11 +113,6 @@ def lay_out(mechanism: Mechanism, *, compact: bool = False) -> Picture:
         size=(float(size[0]), float(size[1])),
         letters={n: _letter(i) for i, n in enumerate(contested_names(mechanism))},
     )
-
-
-def choices_of(cell: str) -> dict[str, str]:
-    """Return the choices written in a variants table: contested name to option."""
-    return dict(part.split("=", 1) for part in split_names(cell))
 
 
 def inks(picture: Picture, choices: Mapping[str, str] | None = None) -> list[Ink]:

@@ -61,7 +61,7 @@ def _ink(ink: Ink, size: str = "") -> str:
         a, b, c, d = (f"{short(x)} {short(y)}" for x, y in ink.points)
         return f'<path class="g-stroke {ink.role}" d="M{a}C{b} {c} {d}"/>'
     closing = "Z" if ink.closed else ""
-    kind = "g-box" if ink.fill == "node" else f"g-head {ink.fill}"
+    kind = "g-box" if ink.fill == "node" else f"g-head on-{ink.fill}"
     return f'<path class="{kind} {ink.role}" d="{polyline(ink.points)}{closing}"/>'
 
 

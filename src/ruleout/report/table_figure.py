@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
-from ruleout.report.picture import Picture, choices_of
+from ruleout.report.picture import Picture
 from ruleout.report.style import (
     COLUMN,
     CONTESTED,
@@ -18,7 +18,7 @@ from ruleout.report.style import (
     VERDICT_COLOURS,
     VERDICT_SIGNS,
 )
-from ruleout.report.tables import records
+from ruleout.report.tables import ABSENT, PRESENT, choices_of, option_words, records
 from ruleout.report.words import VERDICTS, by_verdict, check_words, p_text
 from ruleout.verdicts.types import Judgement
 
@@ -29,6 +29,7 @@ if TYPE_CHECKING:
 ROW: Final = 4.4
 MOST_ROWS: Final = 50
 SMALLEST_P: Final = 1e-3
+_BLANK: Final = {"facecolor": "white", "edgecolor": "none", "pad": 0.4}
 
 
 def table_figure(judgement: Judgement, picture: Picture) -> Figure:
@@ -39,7 +40,9 @@ def table_figure(judgement: Judgement, picture: Picture) -> Figure:
     shown = records(rows.head(MOST_ROWS))
     hidden = len(rows) - len(shown)
     letters = picture.letters
-    cell = 4.5
+    words = option_words(rows["choices"])
+    several = any({*found.values()} - {ABSENT, PRESENT} for found in words.values())
+    cell = 7.5 if several else 4.5
     x = {"variant": 2.0, "letters": 14.0}
     x["verdict"] = x["letters"] + cell * len(letters) + 3
     x["p"] = x["verdict"] + 19
@@ -57,7 +60,12 @@ def table_figure(judgement: Judgement, picture: Picture) -> Figure:
     bottom = y + 3.2 + ROW * len(shown)
     _p_scale(axes, x["p"], y + 2.6, bottom, judgement.meta["alpha"], lowest)
     for i, row in enumerate(shown):
-        _row(axes, row, x, y + ROW * (i + 1) + 0.8, letters, cell, lowest)
+        at = y + ROW * (i + 1) + 0.8
+        _row(axes, row, x, at, lowest)
+        chosen = choices_of(row["choices"])
+        for j, name in enumerate(letters):
+            word = words[name][chosen[name]] if name in chosen else ABSENT
+            _choice(axes, word, x["letters"] + cell * (j + 0.5), at)
     if hidden:
         axes.text(2, bottom + 2, f"and {hidden} more, all ruled out", fontsize=6, va="center")
         bottom += ROW
@@ -104,25 +112,29 @@ def _p_scale(
     axes.text(at, bottom + 2.2, f"{alpha:g}", fontsize=6, ha="center", va="center")
 
 
+_SIGNS: Final[Mapping[str, str]] = {"stimulates": "+", "inhibits": "−"}
+
+
+def _choice(axes: Axes, word: str, x: float, y: float) -> None:
+    """Mark a contested part: a dot if present, a speck if absent, else the option's beginning."""
+    if word in (ABSENT, PRESENT):
+        there = word == PRESENT
+        size, colour = (4.0, INK) if there else (1.6, FAINT)
+        axes.plot([x], [y], marker="o", markersize=size, color=colour)
+    else:
+        axes.text(x, y, _SIGNS.get(word, word[:4]), fontsize=6, ha="center", va="center")
+
+
 def _row(
     axes: Axes,
     row: Mapping[str, Any],
     x: Mapping[str, float],
     y: float,
-    letters: Mapping[str, str],
-    cell: float,
     lowest: float,
 ) -> None:
     verdict = row["verdict"]
     colour = VERDICT_COLOURS[verdict]
     axes.text(x["variant"], y, row["variant"], fontsize=6.5, va="center")
-    choices = choices_of(row["choices"])
-    for i, name in enumerate(letters):
-        at = x["letters"] + cell * (i + 0.5)
-        there = choices.get(name, "absent") != "absent"
-        axes.plot(
-            [at], [y], marker="o", markersize=4 if there else 1.6, color=INK if there else FAINT
-        )
     axes.text(
         x["verdict"],
         y,
@@ -145,7 +157,7 @@ def _row(
         at = _p_position(row["p_value"], x["p"], lowest)
         axes.plot([x["p"], at], [y, y], color=colour, linewidth=0.8)
         axes.plot([at], [y], marker="D", markersize=2.6, color=colour)
-        axes.text(at + 1.4, y, p_text(row["p_value"]), fontsize=6, va="center")
+        axes.text(at + 1.4, y, p_text(row["p_value"]), fontsize=6, va="center", bbox=_BLANK)
     if row["decisive_check"]:
         axes.text(x["why"], y, check_words(row["decisive_check"]), fontsize=6, va="center")
 

@@ -30,9 +30,9 @@
   const admits = (row) => {
     const verdict = form.elements.verdict.value;
     if (verdict && row.dataset.verdict !== verdict) return false;
-    const present = row.dataset.edges.split(";");
-    for (const select of form.querySelectorAll("select[data-edge]")) {
-      if (select.value && present.includes(select.dataset.edge) !== (select.value === "with")) return false;
+    const chosen = row.dataset.choices.split(";");
+    for (const select of form.querySelectorAll("select[data-of]")) {
+      if (select.value && !chosen.includes(`${select.dataset.of}=${select.value}`)) return false;
     }
     const text = form.elements.text.value.trim().toLowerCase();
     return !text || row.textContent.toLowerCase().includes(text);
