@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 from pathlib import Path
 from typing import Final
 
@@ -17,6 +18,11 @@ FAMILY_FILE: Final = "family.toml"
 _TEXT: Final = (
     "topology", "edges", "behaviour", "feature", "kind", "statement", "literals",
     "counterexample_list", "status", "parameters", "axis", "other",
+)  # fmt: skip
+_FLAGS: Final = ("works", "minimal")
+_COUNTS: Final = (
+    "n_edges", "sets", "judged", "shown", "class_size", "in_working", "working", "in_all", "all",
+    "covered", "counterexamples", "covered_sets", "showing_sets", "set", "line",
 )  # fmt: skip
 
 
@@ -59,11 +65,13 @@ def load_survey(folder: Path) -> Survey:
 
 
 def _read(path: Path) -> pd.DataFrame:
-    numeric = [c for c in pd.read_csv(path, nrows=0).columns if c not in _TEXT]
-    return pd.read_csv(
-        path,
-        dtype=dict.fromkeys(_TEXT, str),
-        keep_default_na=False,
-        na_values={c: [""] for c in numeric},
-        float_precision="round_trip",
-    )
+    """Return a table with its numbers exactly as they were written."""
+    table = pd.read_csv(path, dtype=str, keep_default_na=False)
+    for column in table.columns:
+        if column in _FLAGS:
+            table[column] = table[column] == "True"
+        elif column in _COUNTS:
+            table[column] = table[column].astype("int64")
+        elif column not in _TEXT:
+            table[column] = [float(v) if v else math.nan for v in table[column]]
+    return table
