@@ -126,8 +126,8 @@ def parameter_findings(probe: Probe) -> Iterator[Finding]:
             name,
             "many parameters",
             "",
-            f"{count} free parameters for {points} data points; fewer than "
-            f"{POINTS_PER_PARAMETER} points for each carry little.",
+            f"There are fewer than {POINTS_PER_PARAMETER} data points for each free parameter "
+            f"({points} in all).",
             "Fix what is known from elsewhere under [prior], or measure more.",
         )
     yield from _own_names(probe)

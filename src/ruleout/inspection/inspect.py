@@ -29,7 +29,7 @@ from ruleout.variants import VariantSet, expand
 Array = NDArray[np.float64]
 ALL_DRAWS, FEWEST_DRAWS, MOST_DRAWS = 6_000, 24, 200
 """Prior draws over all variants, and per variant at least and at most."""
-ALL_POINTS, FEWEST_POINTS, MOST_POINTS = 512, 5, 25
+ALL_POINTS, FEWEST_POINTS, MOST_POINTS = 1024, 9, 25
 """Points at which sensitivities are taken, likewise."""
 MOST_PAIRS = 40
 """Pairs of variants that are matched against each other."""

@@ -14,13 +14,14 @@ from ruleout.inspection.words import listed, verb
 from ruleout.kernel import Status
 
 Array = NDArray[np.float64]
-TIGHT_RTOL = 1e-9
-"""Solver tolerance of derivatives, so that a true rank deficit stands out from their errors."""
 INSENSITIVE = 1e-4
 """Dimensionless sensitivity below which a parameter moves nothing."""
-RANK_TOLERANCE = 1e-7
-"""Singular values below this share of the largest count as zero. Where truly nothing moves, 1e-8 or
-less is left of a direction, because a group of rows shares its steps."""
+VANISHING = 1e-6
+"""Singular values below this share of the largest may be those of directions in which truly nothing
+moves: 1e-8 or less is left of one there, because a group of rows shares its steps."""
+GAP = 1e-3
+"""Fall from one singular value to the next that sets such directions apart; those of parameters
+that are merely hard to see fall little by little."""
 LEAST_SHARE = 0.2
 """Smallest weight, next to a direction's largest, of a parameter that is named."""
 
@@ -58,7 +59,7 @@ class Sensitivities:
 
 def sensitivities(probe: Probe, q: Array) -> Sensitivities:
     """Return the sensitivities of a variant at coordinates ``q``; unsolvable rows are left out."""
-    mu, jacobian, status = probe.predict.derivatives(q, TIGHT_RTOL)
+    mu, jacobian, status = probe.predict.derivatives(q)
     fine = (status == Status.OK) & np.isfinite(jacobian).all(axis=(1, 2)) & np.isfinite(mu).all(1)
     use = probe.points.fitted
     space = probe.catalogue.space
@@ -124,14 +125,20 @@ def find_rank(found: Sensitivities) -> Rank:
 
 
 def _rank(matrix: Array) -> int:
-    singular = np.linalg.svd(matrix, compute_uv=False)
-    return int(np.sum(singular > RANK_TOLERANCE * singular[0])) if singular[0] > 0.0 else 0
+    """Return how many singular values stand before a clear fall to next to nothing."""
+    return _clear_rank(np.asarray(np.linalg.svd(matrix, compute_uv=False), dtype=float))
+
+
+def _clear_rank(singular: Array) -> int:
+    if not singular[0] > 0.0:
+        return 0
+    falls = (singular[1:] < GAP * singular[:-1]) & (singular[1:] < VANISHING * singular[0])
+    return int(np.argmax(falls)) + 1 if falls.any() else len(singular)
 
 
 def _null_space(matrix: Array) -> Array:
     _, singular, directions = np.linalg.svd(matrix, full_matrices=True)
-    rank = int(np.sum(singular > RANK_TOLERANCE * singular[0])) if singular[0] > 0.0 else 0
-    return np.asarray(directions[rank:])
+    return np.asarray(directions[_clear_rank(singular) :])
 
 
 def _simplified(rows: Array) -> Array:
@@ -184,7 +191,7 @@ def sensitivity_findings(probe: Probe, found: Sensitivities, rank: Rank) -> Iter
 def _say_direction(direction: dict[str, float], straight: bool) -> str:
     up = [n for n, w in direction.items() if w > 0]
     down = [n for n, w in direction.items() if w < 0]
-    if not straight:
+    if not straight or len(direction) == 1:
         return f"Only a combination of {listed(sorted(direction))} can be seen in these readouts."
     if not up or not down:
         return f"No readout moves when {listed(up or down)} change together by suitable factors."
