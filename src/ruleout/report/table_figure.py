@@ -29,6 +29,7 @@ if TYPE_CHECKING:
 ROW: Final = 4.4
 MOST_ROWS: Final = 50
 SMALLEST_P: Final = 1e-3
+_SIGNS: Final[Mapping[str, str]] = {"stimulates": "+", "inhibits": "−"}
 _BLANK: Final = {"facecolor": "white", "edgecolor": "none", "pad": 0.4}
 
 
@@ -41,8 +42,8 @@ def table_figure(judgement: Judgement, picture: Picture) -> Figure:
     hidden = len(rows) - len(shown)
     letters = picture.letters
     words = option_words(rows["choices"])
-    several = any({*found.values()} - {ABSENT, PRESENT} for found in words.values())
-    cell = 7.5 if several else 4.5
+    told = {w for found in words.values() for w in found.values()} - {ABSENT, PRESENT, *_SIGNS}
+    cell = 1.2 * max(map(len, told)) + 2 if told else 4.5
     x = {"variant": 2.0, "letters": 14.0}
     x["verdict"] = x["letters"] + cell * len(letters) + 3
     x["p"] = x["verdict"] + 19
@@ -112,17 +113,14 @@ def _p_scale(
     axes.text(at, bottom + 2.2, f"{alpha:g}", fontsize=6, ha="center", va="center")
 
 
-_SIGNS: Final[Mapping[str, str]] = {"stimulates": "+", "inhibits": "−"}
-
-
 def _choice(axes: Axes, word: str, x: float, y: float) -> None:
-    """Mark a contested part: a dot if present, a speck if absent, else the option's beginning."""
+    """Mark a contested part: a dot if present, a speck if absent, else by the option."""
     if word in (ABSENT, PRESENT):
         there = word == PRESENT
         size, colour = (4.0, INK) if there else (1.6, FAINT)
         axes.plot([x], [y], marker="o", markersize=size, color=colour)
     else:
-        axes.text(x, y, _SIGNS.get(word, word[:4]), fontsize=6, ha="center", va="center")
+        axes.text(x, y, _SIGNS.get(word, word), fontsize=6, ha="center", va="center")
 
 
 def _row(
