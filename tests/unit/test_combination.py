@@ -67,7 +67,7 @@ def test_monte_carlo_interval_is_that_of_clopper_and_pearson():
 def test_max_t_is_uniform_under_the_null():
     """Data drawn as the replicates are give p <= 0.05 in 5 % of cases (Westfall and Young 1993)."""
     rng = np.random.default_rng(11)
-    columns = (Column("misfit", counts=True), Column("serial", counts=True))
+    columns = (Column("misfit", counts=True, rooted=True), Column("serial", counts=True))
 
     def draw(n):
         return np.stack([rng.chisquare(20, n), rng.normal(0, 0.2, n)], axis=1)

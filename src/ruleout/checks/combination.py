@@ -12,8 +12,6 @@ from scipy import stats
 from ruleout.checks.statistics import Column
 
 Array = NDArray[np.float64]
-NARROWEST = 0.1
-"""Smallest spread a column is standardised by, in cube roots of objective units."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -29,17 +27,16 @@ class Standard:
 
 
 def transform(values: Array, columns: tuple[Column, ...]) -> Array:
-    """Return chi-square-like columns as cube roots (Wilson and Hilferty), others as they are."""
-    rooted = np.array([not c.check.startswith("serial") for c in columns], dtype=bool)
+    """Return the values as they are compared: cube roots where a column is ``rooted``."""
+    rooted = np.array([c.rooted for c in columns], dtype=bool)
     return np.where(rooted, np.cbrt(values), values)
 
 
 def standardise(pilot: Array, columns: tuple[Column, ...]) -> Standard:
     """Return the standard of the counting ``columns`` from pilot values (P, C)."""
-    roots = transform(pilot, columns)
-    serial = np.array([c.check.startswith("serial") for c in columns], dtype=bool)
-    floor = np.where(serial, 1e-3, NARROWEST)
-    return Standard(roots.mean(axis=0), np.maximum(roots.std(axis=0, ddof=1), floor))
+    compared = transform(pilot, columns)
+    floor = np.array([c.narrowest for c in columns])
+    return Standard(compared.mean(axis=0), np.maximum(compared.std(axis=0, ddof=1), floor))
 
 
 def maximum(values: Array, columns: tuple[Column, ...], standard: Standard) -> Array:

@@ -19,12 +19,29 @@ SHORTEST_SERIES = 3
 
 @dataclass(frozen=True, slots=True)
 class Column:
-    """One statistic: its name, where it looks and whether it counts for the verdict."""
+    """One statistic.
+
+    Attributes
+    ----------
+    check : str
+        Its name.
+    condition, readout : str
+        Where it looks; empty where it looks everywhere.
+    counts : bool
+        Whether it counts for the verdict.
+    rooted : bool
+        Distributed like a chi-square, and so compared by its cube root (Wilson and Hilferty 1931).
+    narrowest : float
+        Least spread it is standardised by, in the units it is compared in. A statistic that is
+        nearly constant in the pilot replicates must not drown the others by its rare values.
+    """
 
     check: str
     condition: str = ""
     readout: str = ""
     counts: bool = False
+    rooted: bool = False
+    narrowest: float = 0.0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -90,9 +107,9 @@ class Statistics:
         self.has_serial = bool(long)
         columns = []
         if self._known.any():
-            columns.append(Column("misfit", counts=True))
+            columns.append(Column("misfit", counts=True, rooted=True, narrowest=0.1))
         if long:
-            columns.append(Column("serial", counts=True))
+            columns.append(Column("serial", counts=True, narrowest=0.02))
         for s in self.series:
             name = f"{s.condition}:{s.readout}"
             columns.append(Column(f"misfit:{name}", s.condition, s.readout))
