@@ -71,7 +71,8 @@ def test_minimal_and_linked_wirings_against_plain_loops():
                 must_reach=False, starts=(0.1, 0.1))  # fmt: skip
     signs = enumerate_family(of)
     works = np.random.default_rng(3).random(len(signs)) < 0.3
-    minimal, links = find_minimal(signs, works), find_links(signs, works)
+    choices = signs.reshape(len(signs), -1)
+    minimal, links = find_minimal(choices, works), find_links(choices, works)
     at = np.flatnonzero(works)
     for t in at:
         smaller = [u for u in at if u != t and ((signs[u] == 0) | (signs[u] == signs[t])).all()]

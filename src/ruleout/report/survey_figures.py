@@ -8,12 +8,11 @@ import numpy as np
 import pandas as pd
 
 from ruleout.report.graph_figure import graph_axes, paint
-from ruleout.report.picture import inks
 from ruleout.report.style import COLOURS, FAINT, INK, MM, PAGE
-from ruleout.report.survey_graph import topology_picture
+from ruleout.report.survey_graph import Pictures
 from ruleout.report.survey_words import percent
-from ruleout.survey.enumeration import from_label
-from ruleout.survey.types import Family, Survey
+from ruleout.survey.mechanisms import AnyFamily
+from ruleout.survey.types import Survey
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -41,7 +40,7 @@ def best_first(survey: Survey, behaviour: str) -> pd.DataFrame:
     return rows[rows["works"]].sort_values("robustness", ascending=False, kind="stable")
 
 
-def atlas_figure(survey: Survey, family: Family, behaviour: str) -> Figure | None:
+def atlas_figure(survey: Survey, family: AnyFamily, behaviour: str) -> Figure | None:
     """Return the minimal working wirings, each with its robustness; None if there is none."""
     from matplotlib.figure import Figure
 
@@ -49,18 +48,20 @@ def atlas_figure(survey: Survey, family: Family, behaviour: str) -> Figure | Non
     rows = rows[rows["minimal"]].head(MOST_TILES)
     if not len(rows):
         return None
-    pictures = [topology_picture(family, from_label(t)) for t in rows["topology"]]
+    draw = Pictures(family)
+    drawn = [draw.of(name) for name in rows["topology"]]
+    pictures = [picture for picture, _ in drawn]
     columns = min(COLUMNS, len(pictures))
     width = PAGE / COLUMNS
     scale = min((width - 3.0) / p.size[0] for p in pictures)
     tall = max(p.size[1] for p in pictures) * scale + 7.0
     count = -(-len(pictures) // columns)
     figure = Figure(figsize=(columns * width * MM, count * tall * MM))
-    for k, (picture, row) in enumerate(zip(pictures, records(rows), strict=True)):
+    for k, ((picture, ink), row) in enumerate(zip(drawn, records(rows), strict=True)):
         line, column = divmod(k, columns)
         left = column * width + (width - picture.size[0] * scale) / 2
         axes = graph_axes(figure, picture, left, line * tall + 4.5, scale)
-        paint(axes, inks(picture), scale)
+        paint(axes, ink, scale)
         figure.text(
             (column + 0.5) / columns,
             1 - (line * tall + 1.0) / (count * tall),
@@ -136,7 +137,7 @@ def features_figure(survey: Survey, behaviour: str) -> Figure | None:
     return figure
 
 
-def traces_figure(survey: Survey, family: Family, behaviour: str) -> Figure | None:
+def traces_figure(survey: Survey, family: AnyFamily, behaviour: str) -> Figure | None:
     """Return what the best sets of the most robust topologies do."""
     from matplotlib.figure import Figure
 
@@ -161,7 +162,7 @@ def traces_figure(survey: Survey, family: Family, behaviour: str) -> Figure | No
         axes.set_title(_wrapped(words[names[k]]), fontsize=5)
         axes.set_ylim(bottom=0.0)
         if k % columns == 0:
-            axes.set_ylabel(family.nodes[family.output])
+            axes.set_ylabel(family.output_name)
         if k // columns == lines - 1:
             axes.set_xlabel("input" if mine["axis"].iloc[0] == "input" else "time")
     return figure

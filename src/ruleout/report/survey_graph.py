@@ -8,13 +8,37 @@ import numpy as np
 
 from ruleout.mechanism.types import Mechanism
 from ruleout.report.layout import points_and_pieces
-from ruleout.report.picture import Picture
+from ruleout.report.picture import Ink, Picture, inks, lay_out
 from ruleout.report.routing import Stroke, bezier, route
+from ruleout.survey.enumeration import from_label
+from ruleout.survey.mechanisms import AnyFamily, MechanismFamily, VariantRoster
 from ruleout.survey.systems import CONSTANT, wiring
 from ruleout.survey.types import Family, Signs
 
 MARGIN: Final = 1.5
 _APART: Final = (17.0, 15.0)
+
+
+class Pictures:
+    """Draws the topologies of a family by their labels.
+
+    Parameters
+    ----------
+    family : Family or MechanismFamily
+    """
+
+    def __init__(self, family: AnyFamily) -> None:
+        self._family = family
+        if isinstance(family, MechanismFamily):
+            self._whole = lay_out(family.mechanism, compact=True)
+            self._options = VariantRoster(family).options()
+
+    def of(self, label: str) -> tuple[Picture, list[Ink]]:
+        """Return a topology's picture and what to paint of it."""
+        if isinstance(self._family, MechanismFamily):
+            return self._whole, inks(self._whole, self._options[label])
+        picture = topology_picture(self._family, from_label(label))
+        return picture, inks(picture)
 
 
 def places(family: Family) -> dict[str, tuple[float, float]]:

@@ -34,7 +34,8 @@ def map_figure(survey: Survey, behaviour: str) -> Figure | None:
             (place[a], place[b])
             for a, b in zip(links["topology"], links["other"], strict=True)
             if a in place and b in place
-        ]
+        ],
+        dtype=np.int64,
     ).reshape(-1, 2)
     edges = rows["n_edges"].to_numpy(int)
     across = _across(edges, pairs)

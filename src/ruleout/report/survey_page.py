@@ -28,8 +28,8 @@ from ruleout.report.survey_map import map_figure
 from ruleout.report.survey_words import KINDS, NOT_PROVEN, headline, percent
 from ruleout.report.writing import save_figure
 from ruleout.store import write_aside
-from ruleout.survey.enumeration import from_label, in_words
-from ruleout.survey.types import DEFAULT_RANGES, Family, Survey
+from ruleout.survey.mechanisms import RANGES, AnyFamily, MechanismFamily
+from ruleout.survey.types import DEFAULT_RANGES, Survey
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -41,6 +41,8 @@ STYLES: Final[Mapping[str, str]] = {
     "opposed by a constant enzyme, an unregulated one has one on each side.",
     "gene": "Gene regulation: stimulating edges add Hill terms to the gain of their target, "
     "inhibiting edges divide it, and every product is lost at a constant rate.",
+    "mechanism": "The variants of a mechanism, under its own rate laws. Ranges that neither the "
+    "family file nor the mechanism's priors give are those below.",
 }
 CAPTIONS: Final[Mapping[str, tuple[str, str]]] = {
     "atlas": (
@@ -65,7 +67,7 @@ CAPTIONS: Final[Mapping[str, tuple[str, str]]] = {
 }
 
 
-def survey_figures(survey: Survey, family: Family, behaviour: str) -> dict[str, Figure]:
+def survey_figures(survey: Survey, family: AnyFamily, behaviour: str) -> dict[str, Figure]:
     """Return the figures of one behaviour, by name; those without content are left out."""
     makers: dict[str, Callable[[], Figure | None]] = {
         "atlas": lambda: atlas_figure(survey, family, behaviour),
@@ -80,7 +82,7 @@ def survey_figures(survey: Survey, family: Family, behaviour: str) -> dict[str, 
 
 def write_survey_report(
     survey: Survey,
-    family: Family,
+    family: AnyFamily,
     folder: Path,
     *,
     style: Path | None = None,
@@ -117,14 +119,16 @@ def _data_uri(figure: Figure) -> str:
 
 
 def survey_page(
-    survey: Survey, family: Family, images: Mapping[str, list[tuple[str, str, str]]]
+    survey: Survey,
+    family: AnyFamily,
+    images: Mapping[str, list[tuple[str, str, str]]],
 ) -> str:
     """Return the page; ``images`` holds (title, text, data URI) by behaviour."""
     parts = [
         {
             "name": behaviour,
             "headline": headline(survey, behaviour),
-            "principles": _principles(survey, family, behaviour),
+            "principles": _principles(survey, behaviour),
             "figures": [(t, x, Markup(uri)) for t, x, uri in images.get(behaviour, [])],
         }
         for behaviour in survey.meta["results"]
@@ -140,12 +144,11 @@ def survey_page(
     )
 
 
-def _principles(
-    survey: Survey, family: Family, behaviour: str
-) -> list[tuple[str, list[dict[str, Any]]]]:
+def _principles(survey: Survey, behaviour: str) -> list[tuple[str, list[dict[str, Any]]]]:
     table = of_behaviour(survey.principles, behaviour)
+    words = dict(zip(survey.topologies["topology"], survey.topologies["edges"], strict=True))
     groups = []
-    for kind, words in KINDS.items():
+    for kind, title in KINDS.items():
         rows = []
         for row in records(table[table["kind"] == kind]):
             exceptions = [t for t in str(row["counterexample_list"]).split(";") if t]
@@ -153,22 +156,27 @@ def _principles(
             rows.append(
                 {
                     **row,
-                    "examples": [in_words(family, from_label(t)) for t in exceptions[:3]],
+                    "examples": [words[t] for t in exceptions[:3]],
                     "bound": percent(row["bound"]) if bounded else None,
                     "bound_one": percent(row["bound_one"]) if bounded else None,
                 }
             )
         if rows:
-            groups.append((words, rows))
+            groups.append((title, rows))
     return groups
 
 
-def _family_rows(family: Family, survey: Survey) -> list[tuple[str, str]]:
-    ranges = {**DEFAULT_RANGES[family.style], **family.ranges}
+def _family_rows(family: AnyFamily, survey: Survey) -> list[tuple[str, str]]:
+    if isinstance(family, MechanismFamily):
+        ranges = {**RANGES, **family.ranges}
+        nodes = tuple(family.mechanism.nodes)
+    else:
+        ranges = {**DEFAULT_RANGES[family.style], **family.ranges}
+        nodes = family.nodes
     rows = [
-        ("Nodes", ", ".join(family.nodes)),
+        ("Nodes", ", ".join(nodes)),
         ("Input", family.source or "none"),
-        ("Output", family.nodes[family.output]),
+        ("Output", family.output_name),
         ("Wirings", f"{survey.meta['family_size']:,}"),
     ]
     for name, r in ranges.items():
@@ -223,6 +231,9 @@ def _arrows(edges: str) -> str:
     """Return edges in words with the arrows of mathematics."""
     parts = []
     for edge in edges.split("; "):
+        if edge.count(" ") != 2:
+            parts.append(escape(edge))
+            continue
         source, arrow, target = edge.split(" ")
         sign = r"$\rightarrow$" if arrow == "->" else r"$\dashv$"
         parts.append(f"{escape(source)} {sign} {escape(target)}")

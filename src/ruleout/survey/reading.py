@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import MISSING, dataclass, fields
 from pathlib import Path
 from typing import Any, Final, get_args
 
 from ruleout.files import Section, check_name, describe
+from ruleout.mechanism import read_mechanism
+from ruleout.mechanism.parameters import parameter_names
 from ruleout.mechanism.types import Fixed, LogUniform
 from ruleout.survey.behaviours import BEHAVIOURS, Behaviour
+from ruleout.survey.mechanisms import RANGES, AnyFamily, MechanismFamily
 from ruleout.survey.types import DEFAULT_RANGES, Family, Method, Range, Style
 
 KEYS: Final = ("title", "family", "node", "edge", "range", "sampling", "behaviour")
@@ -29,14 +32,14 @@ class FamilyFile:
 
     Attributes
     ----------
-    family : Family
+    family : Family or MechanismFamily
     behaviours : tuple of Behaviour
         In file order.
     sets : int
     method : {"sobol", "latin", "independent"}
     """
 
-    family: Family
+    family: AnyFamily
     behaviours: tuple[Behaviour, ...]
     sets: int
     method: Method
@@ -51,9 +54,11 @@ def read_family(path: Path) -> FamilyFile:
         At the first thing that cannot be used, with file, line and field.
     """
     top = Section.open(path)
+    if "mechanism" in top.section("family"):
+        return _read_mechanism_family(top)
     top.only(KEYS)
     table = top.section("family")
-    table.only(FAMILY_KEYS)
+    table.only(FAMILY_KEYS, {"input": 'the input is a node of kind = "input" with an edge'})
     style: Style = table.word("style", get_args(Style))
     nodes, source = _read_nodes(top, style)
     allowed, drives = _read_edges(top, table, nodes, source)
@@ -72,18 +77,53 @@ def read_family(path: Path) -> FamilyFile:
         must_reach=table.flag("must_reach", bool(source)),
         connected=table.flag("connected"),
         relabelled=table.flag("up_to_relabelling"),
-        ranges=_read_ranges(top, style),
+        ranges=_read_ranges(top, DEFAULT_RANGES[style]),
         constant=table.number("constant", 0.5, above=0.0),
         starts=(start,) * len(nodes),
     )
     if family.must_reach and not source:
         table.fail("must_reach", 'there is no input to start from; add a node of kind = "input"')
     _check_range_names(top, family)
+    return _with_sampling(top, family, bool(source), style == "gene")
+
+
+def _read_mechanism_family(top: Section) -> FamilyFile:
+    """Return the variants of the mechanism that the family file names."""
+    top.only(("title", "family", "range", "sampling", "behaviour"))
+    table = top.section("family")
+    table.only(("mechanism", "input", "output", "start"))
+    mechanism = read_mechanism(top.path.parent / table.text("mechanism"))
+    nodes = mechanism.nodes
+    moving = tuple(name for name, node in nodes.items() if node.kind != "input")
+    output = moving[_node(table, "output", table.text("output"), moving)]
+    source = table.text("input")
+    if source and (source not in nodes or nodes[source].kind != "input"):
+        table.fail("input", f"'{source}' is no input of this mechanism")
+    if nodes[output].contested:
+        table.fail("output", f"'{output}' is contested; the output must be in every variant")
+    names = parameter_names(mechanism)
+    parts = {*RANGES, *(name.rpartition(".")[2] for name in names)}
+    ranges = _read_ranges(top, parts)
+    for name in ranges:
+        if "." in name and name not in names:
+            top.section("range").fail(name, f"'{name}' is no parameter of this mechanism")
+    family = MechanismFamily(
+        title=top.text("title", mechanism.title),
+        mechanism=mechanism,
+        source=source,
+        output=output,
+        ranges=ranges,
+        start=table.number("start", 0.1, low=0.0),
+    )
+    return _with_sampling(top, family, bool(source), nodes[output].kind == "expressed")
+
+
+def _with_sampling(top: Section, family: AnyFamily, has_input: bool, expressed: bool) -> FamilyFile:
     sampling = top.section("sampling")
     sampling.only(("sets", "method"))
     return FamilyFile(
         family=family,
-        behaviours=_read_behaviours(top, family),
+        behaviours=_read_behaviours(top, has_input, expressed),
         sets=sampling.integer("sets", 1024, low=1, high=MOST_SETS),
         method=sampling.word("method", get_args(Method), "sobol"),
     )
@@ -166,13 +206,13 @@ def _named(table: Section) -> Iterator[tuple[str, Any]]:
             yield outer, value
 
 
-def _read_ranges(top: Section, style: Style) -> dict[str, Range]:
+def _read_ranges(top: Section, parts: Collection[str]) -> dict[str, Range]:
     table = top.section("range")
-    parts = DEFAULT_RANGES[style]
     found: dict[str, Range] = {}
     for name, value in _named(table):
         if name.rpartition(".")[2] not in parts:
-            table.fail(name, f"'{name}' has no range here; ranges are for {', '.join(parts)}")
+            known = ", ".join(sorted(parts))
+            table.fail(name, f"'{name}' has no range here; ranges are for {known}")
         if isinstance(value, Mapping):
             inner = Section(table.path, f"range.{name}", value, table.lines)
             inner.only(("low", "high"))
@@ -203,7 +243,7 @@ def _check_range_names(top: Section, family: Family) -> None:
             )
 
 
-def _read_behaviours(top: Section, family: Family) -> tuple[Behaviour, ...]:
+def _read_behaviours(top: Section, has_input: bool, expressed: bool) -> tuple[Behaviour, ...]:
     tables = top.sections("behaviour")
     if not tables:
         top.fail(
@@ -216,11 +256,13 @@ def _read_behaviours(top: Section, family: Family) -> tuple[Behaviour, ...]:
         kind = BEHAVIOURS[name]
         table.only([f.name for f in fields(kind)])
         made = kind(**{f.name: _read_field(table, f) for f in fields(kind)})
-        if made.needs_input and not family.source:
-            top.section("behaviour").fail(name, "it needs an input; add a node of kind input")
-        if made.needs_expressed and family.style != "gene":
+        if made.needs_input and not has_input:
             top.section("behaviour").fail(
-                name, 'it compares with simple regulation, so it needs style = "gene"'
+                name, "it needs an input, a node of that kind; for a mechanism, [family] names it"
+            )
+        if made.needs_expressed and not expressed:
+            top.section("behaviour").fail(
+                name, "it compares with simple regulation, so it needs an expressed output"
             )
         found.append(made)
     return tuple(found)

@@ -5,42 +5,35 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from ruleout.survey.enumeration import codes
-from ruleout.survey.types import Signs
-
 Flags = NDArray[np.bool_]
+Choices = NDArray[np.int8]
 _CHUNK = 512
 
 
-def _masks(signs: Signs) -> NDArray[np.int64]:
-    """Return one bit for each possible edge and sign."""
-    flat = signs.reshape(len(signs), signs.shape[1] ** 2)
-    both = np.concatenate([flat > 0, flat < 0], axis=1)
-    weights = np.left_shift(np.int64(1), np.arange(both.shape[1], dtype=np.int64))
-    return np.asarray(both.astype(np.int64) @ weights)
-
-
-def find_minimal(signs: Signs, works: Flags) -> Flags:
+def find_minimal(choices: Choices, works: Flags) -> Flags:
     """Return which working wirings contain no smaller working one.
 
     Parameters
     ----------
-    signs : (T, n, n) int8 array
-        n up to 5, so that the edges fit the bits of an integer.
+    choices : (T, K) int8 array
+        What each wiring chooses; one contains another that differs from it by absences (0) only.
     works : (T,) bool array
     """
     at = np.flatnonzero(works)
-    masks = _masks(signs[at])
-    minimal = np.zeros(len(signs), dtype=bool)
+    mine = choices[at]
+    values = [v for v in np.unique(mine) if v]
+    chosen = np.concatenate([mine == v for v in values], axis=1) if values else mine != 0
+    has, lacks = chosen.astype(np.float32), (~chosen).astype(np.float32)
+    minimal = np.zeros(len(choices), dtype=bool)
     for first in range(0, len(at), _CHUNK):
-        mine = masks[first : first + _CHUNK, None]
-        inside = (masks[None] & ~mine) == 0
-        minimal[at[first : first + _CHUNK]] = inside.sum(axis=1) == 1
+        # Entry (a, b): choices of b that a lacks. None lacking: b is contained in a.
+        missing = lacks[first : first + _CHUNK] @ has.T
+        minimal[at[first : first + _CHUNK]] = (missing == 0.0).sum(axis=1) == 1
     return minimal
 
 
-def find_links(signs: Signs, works: Flags) -> NDArray[np.int64]:
-    """Return the pairs of working wirings that differ in one edge, added, taken or turned.
+def find_links(choices: Choices, works: Flags) -> NDArray[np.int64]:
+    """Return the pairs of working wirings that differ in one choice, added, taken or changed.
 
     Returns
     -------
@@ -48,20 +41,16 @@ def find_links(signs: Signs, works: Flags) -> NDArray[np.int64]:
         Row numbers, the smaller first.
     """
     at = np.flatnonzero(works)
-    mine = codes(signs[at])
-    order = np.argsort(mine)
-    known = mine[order]
-    flat = signs[at].reshape(len(at), signs.shape[1] ** 2).astype(np.int64)
-    size = flat.shape[1]
-    found = []
-    for k in range(size):
-        weight = 3 ** (size - 1 - k)
-        for value in (-1, 0, 1):
-            other = mine + (value - flat[:, k]) * weight
-            place = np.minimum(np.searchsorted(known, other), max(len(known) - 1, 0))
-            hit = (
-                (flat[:, k] < value) & (known[place] == other) if len(known) else np.zeros(0, bool)
-            )
-            found.append(np.column_stack([at[hit], at[order[place[hit]]]]))
+    found = [np.empty((0, 2), dtype=np.int64)]
+    for k in range(choices.shape[1] if len(at) else 0):
+        others = np.delete(choices[at], k, axis=1)
+        group = np.unique(others, axis=0, return_inverse=True)[1].ravel()
+        order = np.argsort(group, kind="stable")
+        sorted_group = group[order]
+        for step in range(1, len(at)):
+            same = sorted_group[:-step] == sorted_group[step:]
+            if not same.any():
+                break
+            found.append(np.column_stack([at[order[:-step][same]], at[order[step:][same]]]))
     pairs = np.sort(np.concatenate(found), axis=1)
     return pairs[np.lexsort((pairs[:, 1], pairs[:, 0]))]

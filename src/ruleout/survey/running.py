@@ -16,11 +16,13 @@ from ruleout.errors import InputError
 from ruleout.progress import Progress, Silent
 from ruleout.seeds import generator
 from ruleout.store import Store, digest
-from ruleout.survey.enumeration import codes, enumerate_family, in_words, label
+from ruleout.survey.enumeration import enumerate_family
+from ruleout.survey.mechanisms import AnyFamily, MechanismFamily, VariantRoster
 from ruleout.survey.reading import FamilyFile
+from ruleout.survey.roster import MotifRoster, Roster
 from ruleout.survey.scoring import Arrays, score_block
 from ruleout.survey.tables import Counts, tabulate
-from ruleout.survey.types import Settings, Signs, Survey
+from ruleout.survey.types import Settings, Survey
 
 _SETS_PER_BLOCK: Final = 2**17
 _MOST_PER_BLOCK: Final = 256
@@ -63,16 +65,16 @@ def survey(
     settings = settings or Settings(sets=source.sets, method=source.method)
     _check_settings(settings)
     tell = progress or Silent()
-    everything = enumerate_family(source.family)
+    everything = _roster(source.family)
     if not len(everything):
         raise InputError("no wiring fits this family; loosen the limits on edges, or 'must_reach'")
-    signs = _sample(everything, settings)
+    roster = _sample(everything, settings)
     store = None if out is None else Store(out)
-    counts = Counts.empty(signs, len(source.behaviours))
-    tell.start(STEP, len(signs))
-    for rows, block in _blocks(source, signs, settings, store):
+    counts = Counts.empty(roster, len(source.behaviours))
+    tell.start(STEP, len(roster))
+    for rows, block in _blocks(source, roster, settings, store):
         counts.take(rows, block)
-        tell.advance(STEP, len(rows), note=_note(source, signs[rows], block))
+        tell.advance(STEP, len(rows), note=_note(source, roster.pick(rows), block))
     tell.finish(STEP)
     meta = {
         "version": __version__,
@@ -83,7 +85,7 @@ def survey(
         "level": settings.level,
         "working": settings.working,
         "family_size": len(everything),
-        "surveyed": len(signs),
+        "surveyed": len(roster),
         "behaviours": {b.name: repr(b) for b in source.behaviours},
     }
     return tabulate(source, counts, settings, meta)
@@ -100,34 +102,39 @@ def _check_settings(settings: Settings) -> None:
         raise InputError(f"working {settings.working}: give at least 1 showing set")
 
 
-def _sample(signs: Signs, settings: Settings) -> Signs:
-    if settings.sample is None or settings.sample >= len(signs):
-        return signs
+def _roster(family: AnyFamily) -> Roster:
+    if isinstance(family, MechanismFamily):
+        return VariantRoster(family)
+    return MotifRoster(family, enumerate_family(family))
+
+
+def _sample(roster: Roster, settings: Settings) -> Roster:
+    if settings.sample is None or settings.sample >= len(roster):
+        return roster
     chooser = generator(settings.seed, "survey", "sample")
-    return signs[np.sort(chooser.choice(len(signs), settings.sample, replace=False))]
+    return roster.pick(np.sort(chooser.choice(len(roster), settings.sample, replace=False)))
 
 
 def _blocks(
-    source: FamilyFile, signs: Signs, settings: Settings, store: Store | None
+    source: FamilyFile, roster: Roster, settings: Settings, store: Store | None
 ) -> Iterator[tuple[NDArray[np.intp], Arrays]]:
     """Yield rows and scores of blocks as they are found or finished."""
-    # Wirings with edges at the same places share their code, so they stand together.
-    order = np.lexsort((codes(signs), codes((signs != 0).astype(np.int8))))
+    order, labels = roster.order(), roster.labels()
     size = max(1, min(_MOST_PER_BLOCK, _SETS_PER_BLOCK // settings.sets))
-    parts = [order[first : first + size] for first in range(0, len(order), size)]
     waiting = []
-    for rows in parts:
-        key = f"block-{label(signs[rows[0]]).replace('|', '_')}-{len(rows)}"
+    for first in range(0, len(order), size):
+        rows = order[first : first + size]
+        key = f"block-{labels[rows[0]].replace('|', '_')}-{len(rows)}"
         fingerprint = digest(
             __version__, source.family, source.behaviours, settings.sets, settings.method,
-            settings.seed, [label(s) for s in signs[rows]],
+            settings.seed, [labels[t] for t in rows],
         )  # fmt: skip
         found = store.get(key, fingerprint) if store else None
         if found is not None:
             yield rows, found
         else:
             waiting.append((rows, key, fingerprint))
-    for (rows, key, fingerprint), block in _computed(source, signs, settings, waiting):
+    for (rows, key, fingerprint), block in _computed(source, roster, settings, waiting):
         if store:
             store.put(key, fingerprint, block)
         yield rows, block
@@ -137,13 +144,13 @@ Task = tuple[NDArray[np.intp], str, str]
 
 
 def _computed(
-    source: FamilyFile, signs: Signs, settings: Settings, waiting: list[Task]
+    source: FamilyFile, roster: Roster, settings: Settings, waiting: list[Task]
 ) -> Iterator[tuple[Task, Arrays]]:
     """Yield blocks as they are computed, in this process or in several."""
     more = (settings.sets, settings.method, settings.seed)
     if settings.workers == 1 or len(waiting) < 2:
         for task in waiting:
-            yield task, score_block(source.family, source.behaviours, signs[task[0]], *more)
+            yield task, score_block(roster.pick(task[0]), source.behaviours, *more)
         return
     pool = ProcessPoolExecutor(
         settings.workers, mp_context=get_context("spawn"), initializer=_prepare_worker
@@ -153,9 +160,7 @@ def _computed(
         todo = iter(waiting)
         while True:
             while len(running) < 2 * settings.workers and (new := next(todo, None)) is not None:
-                future = pool.submit(
-                    score_block, source.family, source.behaviours, signs[new[0]], *more
-                )
+                future = pool.submit(score_block, roster.pick(new[0]), source.behaviours, *more)
                 running[future] = new
             if not running:
                 break
@@ -175,7 +180,7 @@ def _prepare_worker() -> None:
     set_threads(1)
 
 
-def _note(source: FamilyFile, signs: Signs, block: Arrays) -> str:
+def _note(source: FamilyFile, roster: Roster, block: Arrays) -> str:
     """Return the most robust find of a block in words, empty if there is none."""
     with np.errstate(invalid="ignore"):
         share = np.nan_to_num(block["shown"] / block["judged"])
@@ -183,4 +188,4 @@ def _note(source: FamilyFile, signs: Signs, block: Arrays) -> str:
     if not share[b, h]:
         return ""
     name: Any = source.behaviours[h].name
-    return f"{in_words(source.family, signs[b])}: {name} in {100 * share[b, h]:.2g} % of sets"
+    return f"{roster.words()[b]}: {name} in {100 * share[b, h]:.2g} % of sets"

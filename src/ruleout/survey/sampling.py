@@ -4,20 +4,31 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import lru_cache
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ruleout.mechanism.types import Fixed
 from ruleout.seeds import generator
-from ruleout.survey.types import Family, Method
+from ruleout.survey.types import Method, Range
 
 Array = NDArray[np.float64]
+
+
+class Ranged(Protocol):
+    """What knows the ranges of parameters."""
+
+    def range_of(self, name: str) -> Range:
+        """Return the range of a parameter."""
+        ...
+
+
 _BITS = 30
 
 
 def parameter_sets(
-    family: Family, names: Sequence[str], count: int, method: Method, seed: int, key: str
+    ranged: Ranged, names: Sequence[str], count: int, method: Method, seed: int, key: str
 ) -> Array:
     """Return ``count`` parameter sets of one topology, as (count, len(names)).
 
@@ -26,7 +37,7 @@ def parameter_sets(
 
     Parameters
     ----------
-    family : Family
+    ranged : Family, MechanismFamily or Roster
         Gives the range of each name; uniform in the logarithm.
     names : sequence of str
     count : int
@@ -38,7 +49,7 @@ def parameter_sets(
     key : str
         Identity of the topology.
     """
-    ranges = [family.range_of(name) for name in names]
+    ranges = [ranged.range_of(name) for name in names]
     free = [k for k, r in enumerate(ranges) if not isinstance(r, Fixed)]
     unit = _unit_points(count, len(free), method, generator(seed, "survey", key, method))
     sets = np.empty((count, len(names)))

@@ -1,4 +1,4 @@
-"""Scoring a block of topologies: a pure function of the family, the settings and the block."""
+"""Scoring a block of topologies: a pure function of its wirings, the settings and the block."""
 
 from __future__ import annotations
 
@@ -10,10 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ruleout.survey.behaviours import Behaviour, Score
-from ruleout.survey.enumeration import label
+from ruleout.survey.roster import Roster, Scorable
 from ruleout.survey.sampling import parameter_sets
-from ruleout.survey.systems import Member
-from ruleout.survey.types import Family, Method, Signs
+from ruleout.survey.types import Method
 
 Arrays = dict[str, NDArray[Any]]
 
@@ -25,9 +24,8 @@ _ROWS: Final = 2**15
 
 
 def score_block(
-    family: Family,
+    roster: Roster,
     behaviours: Sequence[Behaviour],
-    signs: Signs,
     sets: int,
     method: Method,
     seed: int,
@@ -36,9 +34,9 @@ def score_block(
 
     Parameters
     ----------
-    family : Family
+    roster : Roster
+        B wirings.
     behaviours : sequence of Behaviour, length H
-    signs : (B, n, n) int8 array
     sets : int
         Parameter sets for each, M.
     method, seed
@@ -52,8 +50,8 @@ def score_block(
         ``example_measures``: (B, H, EXAMPLES, MOST_MEASURES); ``example_values``:
         (B, H, EXAMPLES, most parameters); NaN where there is none.
     """
-    shape = (len(signs), len(behaviours))
-    members = [Member(family, s) for s in signs]
+    shape = (len(roster), len(behaviours))
+    members = [roster.member(t) for t in range(len(roster))]
     widest = max((len(m.parameters) for m in members), default=0)
     block: Arrays = {
         "judged": np.zeros(shape, dtype=np.int64),
@@ -65,16 +63,15 @@ def score_block(
     }
     with warnings.catch_warnings(), np.errstate(all="ignore"):
         warnings.simplefilter("ignore")
-        for b, member in enumerate(members):
-            key = label(member.signs)
-            values = parameter_sets(family, member.parameters, sets, method, seed, key)
+        for b, (key, member) in enumerate(zip(roster.labels(), members, strict=True)):
+            values = parameter_sets(roster, member.parameters, sets, method, seed, key)
             for h, behaviour in enumerate(behaviours):
                 score = _score(behaviour, member, values)
                 _note(block, (b, h), behaviour, score, values)
     return block
 
 
-def _score(behaviour: Behaviour, member: Member, values: NDArray[np.float64]) -> Score:
+def _score(behaviour: Behaviour, member: Scorable, values: NDArray[np.float64]) -> Score:
     parts = [
         behaviour.score(member.subject(values[first : first + _ROWS]))
         for first in range(0, len(values), _ROWS)

@@ -12,14 +12,13 @@ from numpy.typing import NDArray
 
 from ruleout.survey.behaviours import Behaviour
 from ruleout.survey.counting import exact_interval, upper_bound
-from ruleout.survey.enumeration import class_sizes, in_words, label, symmetries
-from ruleout.survey.features import Features, find_features
+from ruleout.survey.features import Features
 from ruleout.survey.principles import Principle, find_principles, statement
 from ruleout.survey.reading import FamilyFile
 from ruleout.survey.relations import find_links, find_minimal
+from ruleout.survey.roster import Roster
 from ruleout.survey.scoring import EXAMPLES, MOST_MEASURES, Arrays
-from ruleout.survey.systems import Member
-from ruleout.survey.types import Settings, Signs, Survey
+from ruleout.survey.types import Settings, Survey
 
 Flags = NDArray[np.bool_]
 TRACED = 12
@@ -34,14 +33,15 @@ class Counts:
 
     Attributes
     ----------
-    signs : (T, n, n) int8 array
+    roster : Roster
+        T wirings.
     judged, shown : (T, H) int64 arrays
     example : (T, H, EXAMPLES) int64 array
     measures : (T, H, EXAMPLES, MOST_MEASURES) array
     values : list of (H, EXAMPLES, D) arrays, one per topology
     """
 
-    signs: Signs
+    roster: Roster
     judged: NDArray[np.int64]
     shown: NDArray[np.int64]
     example: NDArray[np.int64]
@@ -49,16 +49,16 @@ class Counts:
     values: list[NDArray[np.float64]]
 
     @classmethod
-    def empty(cls, signs: Signs, behaviours: int) -> Counts:
+    def empty(cls, roster: Roster, behaviours: int) -> Counts:
         """Return counts of nothing."""
-        shape = (len(signs), behaviours)
+        shape = (len(roster), behaviours)
         return cls(
-            signs=signs,
+            roster=roster,
             judged=np.zeros(shape, dtype=np.int64),
             shown=np.zeros(shape, dtype=np.int64),
             example=np.full((*shape, EXAMPLES), -1, dtype=np.int64),
             measures=np.full((*shape, EXAMPLES, MOST_MEASURES), np.nan),
-            values=[np.empty((behaviours, EXAMPLES, 0))] * len(signs),
+            values=[np.empty((behaviours, EXAMPLES, 0))] * len(roster),
         )
 
     def take(self, rows: NDArray[np.intp], block: Arrays) -> None:
@@ -74,26 +74,22 @@ def tabulate(
     source: FamilyFile, counts: Counts, settings: Settings, meta: Mapping[str, Any]
 ) -> Survey:
     """Return the survey that the counts amount to."""
-    family, signs = source.family, counts.signs
-    names = [label(s) for s in signs]
-    words = [in_words(family, s) for s in signs]
-    sizes = (
-        class_sizes(signs, symmetries(family)) if family.relabelled else np.ones(len(signs), int)
-    )
-    features = find_features(family, signs)
+    roster = counts.roster
+    names, words, choices = roster.labels(), roster.words(), roster.choices()
+    features, sizes = roster.features(), roster.class_sizes()
     topologies, shares, principles, examples, traces, links = [], [], [], [], [], []
     summary = {}
     for h, behaviour in enumerate(source.behaviours):
         shown, judged = counts.shown[:, h], counts.judged[:, h]
         works = shown >= settings.working
-        minimal = find_minimal(signs, works)
+        minimal = find_minimal(choices, works)
         low, high = exact_interval(shown, judged, settings.level)
         topologies.append(
             pd.DataFrame(
                 {
                     "topology": names,
                     "edges": words,
-                    "n_edges": np.count_nonzero(signs, axis=(1, 2)),
+                    "n_edges": np.count_nonzero(choices, axis=1),
                     "behaviour": behaviour.name,
                     "sets": settings.sets,
                     "judged": judged,
@@ -111,7 +107,7 @@ def tabulate(
         principles.append(_principle_table(behaviour, features, works, counts, h, names, settings))
         examples.append(_example_table(source, counts, h, works, names))
         traces.append(_trace_table(source, counts, h, works, names))
-        pairs = find_links(signs, works)
+        pairs = find_links(choices, works)
         links.append(
             pd.DataFrame(
                 {
@@ -248,7 +244,7 @@ def _example_table(
     measures = behaviour.measured
     rows = []
     for t in np.flatnonzero(works):
-        parameters = Member(source.family, counts.signs[t]).parameters
+        parameters = counts.roster.member(int(t)).parameters
         for e, number in enumerate(counts.example[t, h]):
             if number < 0:
                 continue
@@ -275,7 +271,7 @@ def _trace_table(
     parts = [pd.DataFrame(columns=["topology", "behaviour", "set", "line", "axis", "x", "output"])]
     best_first = [t for t in np.argsort(-share, kind="stable") if works[t]]
     for t in best_first[:TRACED]:
-        member = Member(source.family, counts.signs[t])
+        member = counts.roster.member(int(t))
         values = counts.values[t][h, :1, : len(member.parameters)]
         trace = behaviour.trace(member.subject(values))
         lines, points = trace.x.shape

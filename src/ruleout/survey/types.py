@@ -95,6 +95,11 @@ class Family:
         part = name.rpartition(".")[2]
         return self.ranges.get(part, DEFAULT_RANGES[self.style][part])
 
+    @property
+    def output_name(self) -> str:
+        """Name of the output node."""
+        return self.nodes[self.output]
+
     def edge_name(self, source: int, target: int) -> str:
         """Return the name of the edge between two nodes."""
         return f"{self.nodes[source]}_on_{self.nodes[target]}"
