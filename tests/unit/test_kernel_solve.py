@@ -332,3 +332,33 @@ def test_an_empty_batch_gives_an_empty_solution(compiled_or_reference: str) -> N
     solution = Program(DECAY).solve(np.empty((0, 1)), np.empty((0, 2)), plans)
     assert solution.states.shape == (0, 2, 1)
     assert Program(DECAY).steady(np.empty((0, 1)), np.empty((0, 2))).states.shape == (0, 1)
+
+
+def test_a_system_without_states_is_solved_at_once(compiled_or_reference: str) -> None:  # noqa: ARG001
+    """A condition may remove or clamp every node."""
+    program = Program(System((), ("a",), ()))
+    solution = program.solve(np.empty((2, 0)), np.ones((2, 1)), [protocol([1.0, np.inf], 0, 1)])
+    assert solution.states.shape == (2, 2, 0)
+    assert (solution.status == Status.OK).all()
+    assert program.steady(np.empty((2, 0)), np.ones((2, 1))).stable.all()
+
+
+def test_tolerances_must_be_positive() -> None:
+    program, plan = compile_system(DECAY), protocol([1.0], 1, 2)
+    for wrong in ({"rtol": 0.0}, {"atol": 0.0}, {"atol": [np.nan]}, {"rtol": -1e-6}):
+        with pytest.raises(ValueError, match="tolerances must be positive"):
+            program.solve([[1.0]], [[1.0, 1.0]], [plan], **wrong)  # type: ignore[arg-type]
+
+
+def test_where_no_code_can_be_made_the_kernel_is_interpreted(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    def refuse(*_: object, **__: object) -> None:
+        raise OSError("cannot allocate executable memory")
+
+    monkeypatch.setattr("ruleout.kernel.engine.MachineCode", refuse)
+    monkeypatch.setattr("ruleout.kernel.engine._step_code", refuse)
+    with pytest.warns(RuntimeWarning, match="executable memory"):
+        program = Program(DECAY)
+    solution = program.solve([[1.0]], [[0.0, 1.0]], [protocol([1.0], 1, 2)])
+    assert solution.states[0, 0, 0] == pytest.approx(np.exp(-1.0), rel=1e-5)

@@ -172,9 +172,24 @@ def _vectors(group: int, width: int) -> int:
     return min(range(fewest, fewest + 4), key=waste)
 
 
-_threads = os.cpu_count() or 1
+def _usable_cores() -> int:
+    affinity = getattr(os, "sched_getaffinity", None)
+    return len(affinity(0)) if affinity else os.cpu_count() or 1
+
+
+_threads = _usable_cores()
 _pool: ThreadPoolExecutor | None = None
 _pool_lock = threading.Lock()
+
+
+def _forget_pool() -> None:
+    """A forked process has the pool but not its threads."""
+    global _pool, _pool_lock
+    _pool, _pool_lock = None, threading.Lock()
+
+
+if hasattr(os, "register_at_fork"):
+    os.register_at_fork(after_in_child=_forget_pool)
 
 
 def set_threads(count: int) -> None:

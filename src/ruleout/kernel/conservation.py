@@ -37,7 +37,7 @@ def conserved_totals(lowered: Lowered) -> tuple[Array, tuple[int, ...]]:
     for i, value in enumerate(evaluate(lowered.rhs, values)):
         slopes[:, i] = value
     slopes = slopes[np.isfinite(slopes).all(axis=1)]
-    if len(slopes) < n + 1:
+    if n == 0 or len(slopes) < n + 1:
         return np.empty((0, n)), ()
     _, singular, directions = np.linalg.svd(slopes)
     rank = int(np.sum(singular > 1e-11 * max(singular[0], 1.0)))

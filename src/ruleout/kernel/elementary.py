@@ -32,16 +32,26 @@ _EXP_TERMS: Final = 14
 
 
 class Elementary:
-    """Emits calls to the functions, and each function's body at :meth:`finish`."""
+    """Emits calls to the functions, and each function's body at :meth:`finish`.
+
+    Attributes
+    ----------
+    inline : bool
+        Whether bodies are written in place of calls: faster to run, slower to compile.
+    """
 
     def __init__(self, assembly: Assembly) -> None:
+        self.inline = False
         self._assembly = assembly
         self._wanted: dict[str, Callable[[Value], Value]] = {}
 
     def call(self, name: str, *arguments: Value) -> Value:
         """Return function ``name`` (exp, log, log_positive, sin, cos, tanh) of a value."""
+        body: Callable[[Value], Value] = getattr(self, f"_{name}")
+        if self.inline:
+            return body(*arguments)
         kind = self._assembly.doubles
-        self._wanted[name] = getattr(self, f"_{name}")
+        self._wanted[name] = body
         return self._assembly.emit(
             f"call {kind} @{name}({', '.join(f'{kind} {a}' for a in arguments)})"
         )

@@ -16,6 +16,9 @@ from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.types import Array
 
 _LARGEST_UNROLLED_POWER = 32
+_CALLS = frozenset({"exp", "log", "pow", "sin", "cos", "tanh"})
+_MOST_INLINED = 8
+"""Calls up to which the right-hand side, the code run most, has their bodies in line."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,9 +82,24 @@ def _hoisted(roots: Sequence[Expr], states: frozenset[str]) -> list[Expr]:
         args = [new[a] for a in node.args]
         if node.op == "div" and node in moving and node.args[1] not in moving:
             new[node] = args[0] * apply("div", ONE, args[1])
+        elif node.op == "pow" and node in moving and node.args[1] not in moving:
+            new[node] = _power_of_product(*args)
         else:
             new[node] = apply(node.op, *args)
     return [new[root] for root in roots]
+
+
+def _power_of_product(base: Expr, exponent: Expr) -> Expr:
+    """Return ``base ** exponent``, as a product of powers if a factor of the base is positive.
+
+    In a Hill term (s / half) ** h the power of the half is then computed once per segment, and
+    the logarithm of the source is shared by all terms that have it.
+    """
+    if base.op == "mul" and exponent.op != "const":
+        for a, b in (base.args, base.args[::-1]):
+            if _is_positive(a):
+                return apply("pow", a, exponent) * apply("pow", b, exponent)
+    return apply("pow", base, exponent)
 
 
 class Emission:
@@ -138,7 +156,10 @@ class Emission:
         """Write ``slopes(y, c, f)``: the right-hand side."""
         with self._assembly.function("export_slopes", ["ptr %y", "ptr %c", "ptr %f"]):
             rhs = self._graph.rhs
+            calls = sum(node.op in _CALLS for node in ordered(rhs) if node in self._graph.moving)
+            self._elementary.inline = calls <= _MOST_INLINED
             values = self._values(rhs, self._inputs(rhs))
+            self._elementary.inline = False
             for i, value in enumerate(values):
                 self._assembly.store(value, "%f", i)
 

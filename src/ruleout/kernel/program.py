@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import os
 import threading
+import warnings
 from collections import OrderedDict
 from collections.abc import Sequence
 from functools import lru_cache
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from ruleout.kernel.compiled import CompiledBackend
 from ruleout.kernel.conservation import conserved_totals
@@ -42,9 +43,16 @@ def _compiled(system: System) -> Program:
 def _backend(
     lowered: Lowered, totals: Array, pivots: tuple[int, ...]
 ) -> CompiledBackend | ReferenceBackend:
-    if os.environ.get("RULEOUT_KERNEL") == "reference":
-        return ReferenceBackend(lowered, totals, pivots)
-    return CompiledBackend(lowered, totals, pivots)
+    if lowered.states and os.environ.get("RULEOUT_KERNEL") != "reference":
+        try:
+            return CompiledBackend(lowered, totals, pivots)
+        except (ImportError, OSError, RuntimeError) as error:
+            warnings.warn(
+                f"no machine code can be made here ({error}): the kernel is interpreted, slowly",
+                RuntimeWarning,
+                stacklevel=2,
+            )
+    return ReferenceBackend(lowered, totals, pivots)
 
 
 class Program:
@@ -117,8 +125,13 @@ class Program:
             raise ValueError(f"which must lie in 0..{len(protocols) - 1}")
         schedule = self._schedule(protocols)
         n = len(self.system.states)
+        if n == 0:
+            steps = np.zeros(rows, dtype=np.int32)
+            return Solution(np.empty((rows, schedule.outputs, 0)), _all_ok(rows), steps)
         tolerance = np.full(len(self._lowered.states), np.inf)
         tolerance[:n] = atol
+        if not (rtol > 0.0 and np.all(tolerance > 0.0)):
+            raise ValueError(f"tolerances must be positive, not rtol={rtol!r} and atol={atol!r}")
         states, status, steps = self._backend.solve(
             y,
             q,
@@ -156,6 +169,8 @@ class Program:
         """
         y, q = self._check_rows(y0, p, group)
         rows, n = len(y), len(self.system.states)
+        if n == 0:
+            return SteadyStates(y, np.ones(rows, dtype=bool), _all_ok(rows))
         if self._lowered.forced:
             status = np.full(rows, Status.NO_STEADY_STATE, dtype=np.int8)
             return SteadyStates(np.full((rows, n), np.nan), np.zeros(rows, dtype=bool), status)
@@ -193,3 +208,8 @@ class Program:
             while len(self._schedules) > 64:
                 self._schedules.popitem(last=False)
         return known[1]
+
+
+def _all_ok(rows: int) -> NDArray[np.int8]:
+    """Return the outcome of a system without states: every node removed or clamped."""
+    return np.full(rows, Status.OK, dtype=np.int8)
