@@ -106,6 +106,75 @@ def judge(
 
 
 @app.command()
+def rehearse(
+    case: CaseFolder,
+    truth: Annotated[
+        list[str] | None,
+        typer.Option(
+            metavar="VARIANT",
+            help="Simulate from this one; may be given repeatedly.",
+            show_default="all",
+        ),
+    ] = None,
+    datasets: Annotated[
+        int, typer.Option(min=1, help="Data sets to simulate from each true variant.")
+    ] = 50,
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="DIR", help="Folder for the results.", show_default="reports/CASE_rehearsal"
+        ),
+    ] = None,
+    run: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="RUN",
+            help="Folder of a finished run that tells the parameters, where there are data.",
+            show_default="reports/CASE, else judged first",
+        ),
+    ] = None,
+    seed: Seed = 1,
+    workers: Annotated[
+        int | None,
+        typer.Option(min=1, help="Processes to use.", show_default="all cores"),
+    ] = None,
+    effort: Annotated[Effort, typer.Option(help="How much computing to spend.")] = Effort.quick,
+    alpha: Annotated[
+        float, typer.Option(help="Chance of ruling out a true variant that is accepted.")
+    ] = 0.05,
+    vary: Annotated[
+        str | None,
+        typer.Option(
+            metavar="WHAT=VALUES",
+            help="Also rehearse replicates=1,2,3,5, noise=0.5,1,2 or times=6,12,24.",
+            show_default=False,
+        ),
+    ] = None,
+    log: LogOption = Log.text,
+) -> None:
+    """Tell what a case's experiments could rule out, and how often the truth would be."""
+    from ruleout.cli.rehearsing import run_rehearse
+
+    out = out or Path("reports") / f"{case.resolve().name}_rehearsal"
+    kept = f"Judged data sets are kept in {out}; give the same command again to go on from there."
+    with guarded(kept):
+        status = run_rehearse(
+            case,
+            out=out,
+            run=run,
+            truths=truth or [],
+            data_sets=datasets,
+            seed=seed,
+            workers=workers,
+            effort=effort.value,
+            alpha=alpha,
+            vary=vary,
+            as_json=log is Log.json,
+        )
+        raise typer.Exit(status)
+
+
+@app.command()
 def inspect(
     case: CaseFolder,
     seed: Seed = 1,

@@ -14,13 +14,14 @@ NOT_FULLY_JUDGED = 3
 
 
 def cores() -> int:
+    """Return how many cores this process may use."""
     """Return the number of cores this process may use."""
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
 
 
-def _check_out(out: Path) -> None:
+def check_out(out: Path) -> None:
     """Make the run folder now, so that an hour's work is not lost to a wrong path."""
     try:
         out.mkdir(parents=True, exist_ok=True)
@@ -34,6 +35,12 @@ def _check_out(out: Path) -> None:
         raise InputError(
             "this folder cannot be written; give another one with --out", where=str(out)
         )
+
+
+def check_alpha(alpha: float) -> None:
+    """Raise InputError unless ``alpha`` can be an error rate."""
+    if not 0 < alpha < 0.5:
+        raise InputError(f"--alpha {alpha:g}: give a chance between 0 and 0.5, such as 0.05")
 
 
 def run_judge(
@@ -53,12 +60,11 @@ def run_judge(
     int
         0, or 3 where some variant could not be judged.
     """
-    if not 0 < alpha < 0.5:
-        raise InputError(f"--alpha {alpha:g}: give a chance between 0 and 0.5, such as 0.05")
+    check_alpha(alpha)
     from ruleout.case import read_case
 
     case = read_case(folder)
-    _check_out(out)
+    check_out(out)
     from ruleout.pipeline import Settings, judge
     from ruleout.report import write_report
 

@@ -8,6 +8,7 @@ from ruleout.experiments.types import Plan, Readout
 from ruleout.files import Section, describe
 
 KEYS = ("readouts", "times", "replicates", "sd")
+TRUTH = "truth"
 MOST_REPLICATES = 1_000
 MOST_TIMES = 10_000
 
@@ -25,17 +26,19 @@ def read_plan(
     if "plan" not in top:
         return None
     table = top.section("plan")
-    table.only((*KEYS, *conditions))
+    table.only((*KEYS, TRUTH, *conditions))
     if "times" not in table:
         table.fail("times", "'times' is missing; list the times to measure at")
     general = _read_one(table, Plan(tuple(readouts), ()), readouts)
     own = {}
     for name in conditions:
-        if name in table and name not in KEYS:
+        if name in table and name not in (*KEYS, TRUTH):
             inner = table.section(name)
             inner.only(KEYS)
             own[name] = _read_one(inner, general, readouts)
-    return Plan(general.readouts, general.times, general.replicates, general.sd, own)
+    return Plan(
+        general.readouts, general.times, general.replicates, general.sd, own, _read_truth(table)
+    )
 
 
 def _read_one(table: Section, default: Plan, readouts: Mapping[str, Readout]) -> Plan:
@@ -48,6 +51,14 @@ def _read_one(table: Section, default: Plan, readouts: Mapping[str, Readout]) ->
             table.fail("sd", f"readout '{name}' has noise = \"given\"; plan its sd as well")
     replicates = table.integer("replicates", default.replicates, low=1, high=MOST_REPLICATES)
     return Plan(chosen, _read_times(table, default.times), replicates, sd)
+
+
+def _read_truth(table: Section) -> dict[str, float]:
+    """Return stated values of parameters; whether they exist depends on the variant."""
+    if TRUTH not in table:
+        return {}
+    inner = table.section(TRUTH)
+    return {name: inner.as_number(name, value) for name, value in table.parameters(TRUTH).items()}
 
 
 def _read_times(table: Section, default: tuple[float, ...]) -> tuple[float, ...]:

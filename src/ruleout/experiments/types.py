@@ -112,7 +112,8 @@ class Plan:
     """A planned experiment: what would be measured, when and how well.
 
     ``readouts``, ``times``, ``replicates`` and ``sd`` may be set for all conditions or, under
-    ``by_condition``, for one.
+    ``by_condition``, for one. ``truth`` states parameter values to simulate with; without it they
+    come from the priors.
     """
 
     readouts: tuple[str, ...]
@@ -120,6 +121,7 @@ class Plan:
     replicates: int = 1
     sd: Mapping[str, float] = field(default_factory=dict)
     by_condition: Mapping[str, Plan] = field(default_factory=dict)
+    truth: Mapping[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

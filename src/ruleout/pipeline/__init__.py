@@ -3,20 +3,18 @@
 from __future__ import annotations
 
 import asyncio
-import multiprocessing
-import signal
 from collections.abc import Coroutine
-from concurrent.futures import Executor, ProcessPoolExecutor, ThreadPoolExecutor
-from multiprocessing import get_context
+from concurrent.futures import Executor
+from contextlib import nullcontext
 from pathlib import Path
 from typing import Any
 
 from ruleout.case import Case
-from ruleout.kernel import set_threads
 from ruleout.pipeline.assemble import assemble, save_fits
 from ruleout.pipeline.flow import Flow
 from ruleout.pipeline.settings import EFFORTS, Effort, Settings
 from ruleout.pipeline.variants import Results, judge_variants
+from ruleout.pipeline.workers import local_workers
 from ruleout.progress import Progress, Silent
 from ruleout.store import Store, locked, save_judgement
 from ruleout.verdicts import Judgement
@@ -57,15 +55,9 @@ def judge(
     """
     settings = settings or Settings()
     with locked(out):
-        own = None if executor else _local_executor(settings.workers)
-        runner = executor or own
-        assert runner is not None
-        try:
+        with nullcontext(executor) if executor else local_workers(settings.workers) as runner:
             flow = Flow(case, settings, Store(out), runner, progress or Silent())
             results = _run(judge_variants(flow))
-        finally:
-            if own is not None:
-                _stop(own)
         judgement = assemble(case, settings, results)
         save_judgement(judgement, case, out)
         save_fits(case, results, out)
@@ -81,23 +73,3 @@ def _run(main: Coroutine[Any, Any, Results]) -> Results:
         while isinstance(first, BaseExceptionGroup):
             first = first.exceptions[0]
         raise first from None
-
-
-def _local_executor(workers: int) -> Executor:
-    if workers == 1:
-        return ThreadPoolExecutor(1, thread_name_prefix="ruleout")
-    return ProcessPoolExecutor(workers, mp_context=get_context("spawn"), initializer=_begin_worker)
-
-
-def _begin_worker() -> None:
-    """Leave interrupts to the parent, and the other cores to the other workers."""
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
-    set_threads(1)
-
-
-def _stop(executor: Executor) -> None:
-    """Give up what is still running: whatever is finished is on disk."""
-    executor.shutdown(wait=False, cancel_futures=True)
-    if isinstance(executor, ProcessPoolExecutor):
-        for child in multiprocessing.active_children():
-            child.terminate()
