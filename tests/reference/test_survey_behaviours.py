@@ -15,6 +15,7 @@ from ruleout.survey.behaviours.hysteresis import Hysteresis
 from ruleout.survey.behaviours.multistability import Multistability
 from ruleout.survey.behaviours.oscillation import Oscillation
 from ruleout.survey.behaviours.pulse import Pulse
+from ruleout.survey.behaviours.resemblance import Resemblance
 from ruleout.survey.behaviours.switching import Switch
 from ruleout.survey.behaviours.timing import Acceleration, Delay, response_times
 from ruleout.survey.enumeration import enumerate_family, label
@@ -245,3 +246,16 @@ def test_thomas_rules_hold_as_hard_zeros_over_all_two_node_gene_networks():
     assert stable[plus].any()
     # With this many sets most of the 53 networks with a positive circuit are seen multistable.
     assert np.count_nonzero(stable[plus]) > 25
+
+
+def test_data_are_recognised_up_to_a_scale():
+    """x' = u - k x from rest at 0, u = 1 until 2, then 0: closed form, times an arbitrary 7."""
+    times = np.array([0.5, 1.0, 2.0, 3.0, 5.0])
+    rise, fall = 1.0 - np.exp(-times), (1.0 - np.exp(-2.0)) * np.exp(2.0 - times)
+    data = 7.0 * np.where(times <= 2.0, rise, fall)
+    of = Resemblance(tuple(times), tuple(data), 0.0, ((0.0, 1.0), (2.0, 0.0)), closeness=0.01)
+    made = subject({"x": "input_u - k * x"}, "x", k=[1.0, 1.5], **{U: [1.0, 1.0]})
+    score = of.score(made)
+    assert score.shown.tolist() == [True, False]
+    assert score.measures["scale"][0] == pytest.approx(7.0, rel=1e-4)
+    assert score.measures["distance"][0] < 1e-4

@@ -43,6 +43,9 @@ precision = 5
 """
 
 
+CASE = Path(__file__).parents[2] / "mechanisms_demo" / "frost_relay"
+
+
 def written(folder: Path, text: str = FAMILY) -> Path:
     path = folder / "family.toml"
     path.write_text(text)
@@ -203,5 +206,19 @@ def test_every_behaviour_can_be_written_in_a_family_file(tmp_path):
         .replace("most_edges = 3", "most_edges = 2")
     )
     text = text[: text.index("[behaviour")] + "".join(f"[behaviour.{b}]\n" for b in BEHAVIOURS)
+    text += f'case = "{CASE}"\ncondition = "pulse"\nreadout = "active_kinase"\n'
     result = survey(read_family(written(tmp_path, text)), Settings(sets=8, sample=6))
     assert set(result.topologies["behaviour"]) == set(BEHAVIOURS)
+
+
+@pytest.mark.parametrize(
+    ("condition", "message"),
+    [("no_protectant", "does more than to step an input"), ("cold", "is not one of step")],
+)
+def test_conditions_that_no_family_can_follow_are_refused(tmp_path, condition, message):
+    text = FAMILY[: FAMILY.index("[behaviour")] + (
+        f'[behaviour.resemblance]\ncase = "{CASE}"\ncondition = "{condition}"\n'
+        'readout = "active_kinase"\n'
+    )
+    with pytest.raises(InputError, match=message):
+        read_family(written(tmp_path, text))

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Iterator, Mapping
-from dataclasses import MISSING, dataclass, fields
+from dataclasses import dataclass, fields
 from pathlib import Path
 from typing import Any, Final, get_args
 
@@ -12,6 +12,8 @@ from ruleout.mechanism import read_mechanism
 from ruleout.mechanism.parameters import parameter_names
 from ruleout.mechanism.types import Fixed, LogUniform
 from ruleout.survey.behaviours import BEHAVIOURS, Behaviour
+from ruleout.survey.behaviours.resemblance import Resemblance
+from ruleout.survey.data import read_resemblance
 from ruleout.survey.mechanisms import RANGES, AnyFamily, MechanismFamily
 from ruleout.survey.types import DEFAULT_RANGES, Family, Method, Range, Style
 
@@ -250,12 +252,10 @@ def _read_behaviours(top: Section, has_input: bool, expressed: bool) -> tuple[Be
             "behaviour",
             f"no behaviour is given; write [behaviour.NAME] with one of {', '.join(BEHAVIOURS)}",
         )
-    found = []
+    found: list[Behaviour] = []
     for name, table in tables.items():
         top.section("behaviour").one_of(name, name, tuple(BEHAVIOURS))
-        kind = BEHAVIOURS[name]
-        table.only([f.name for f in fields(kind)])
-        made = kind(**{f.name: _read_field(table, f) for f in fields(kind)})
+        made = read_resemblance(table) if name == Resemblance.name else _read_behaviour(name, table)
         if made.needs_input and not has_input:
             top.section("behaviour").fail(
                 name, "it needs an input, a node of that kind; for a mechanism, [family] names it"
@@ -268,9 +268,14 @@ def _read_behaviours(top: Section, has_input: bool, expressed: bool) -> tuple[Be
     return tuple(found)
 
 
+def _read_behaviour(name: str, table: Section) -> Behaviour:
+    kind = BEHAVIOURS[name]
+    table.only([f.name for f in fields(kind)])
+    made: Behaviour = kind(**{f.name: _read_field(table, f) for f in fields(kind)})
+    return made
+
+
 def _read_field(table: Section, field: Any) -> float | int:
-    if field.default is MISSING:
-        return table.number(field.name)
     if isinstance(field.default, int):
         return table.integer(field.name, field.default, low=1, high=100_000)
     return table.number(field.name, float(field.default), low=0.0)

@@ -11,6 +11,7 @@ from ruleout.survey.behaviours.hysteresis import Hysteresis
 from ruleout.survey.behaviours.multistability import Multistability
 from ruleout.survey.behaviours.oscillation import Oscillation
 from ruleout.survey.behaviours.pulse import Pulse
+from ruleout.survey.behaviours.resemblance import Resemblance
 from ruleout.survey.behaviours.switching import Switch
 from ruleout.survey.behaviours.timing import Acceleration, Delay
 
@@ -23,6 +24,7 @@ _KINDS = (
     Pulse,
     Acceleration,
     Delay,
+    Resemblance,
 )
 BEHAVIOURS: Final[Mapping[str, Any]] = {kind.name: kind for kind in _KINDS}
 """Behaviour classes by the name that family files use."""
