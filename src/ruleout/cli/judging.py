@@ -6,15 +6,22 @@ import json
 import os
 import sys
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from ruleout.cli.progress import shown_progress
 from ruleout.errors import InputError
 
+if TYPE_CHECKING:
+    from ruleout.case import Case
+    from ruleout.pipeline import Settings
+    from ruleout.progress import Progress
+    from ruleout.verdicts import Judgement
+
+THOROUGH = "thorough"
 NOT_FULLY_JUDGED = 3
 
 
 def cores() -> int:
-    """Return how many cores this process may use."""
     """Return the number of cores this process may use."""
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
@@ -71,6 +78,8 @@ def run_judge(
     settings = Settings(seed=seed, effort=effort, alpha=alpha, workers=workers or cores())
     with shown_progress(as_json=as_json) as progress:
         judgement = judge(case, settings, out=out, progress=progress)
+        if effort == THOROUGH:
+            judgement = _with_chances(case, judgement, settings, out, progress)
         write_report(judgement, case, out, progress=progress)
     if as_json:
         _print_json(judgement, out)
@@ -92,6 +101,21 @@ def run_judge(
             indent="  ",
         )
     return 0 if judgement.fully_judged else NOT_FULLY_JUDGED
+
+
+def _with_chances(
+    case: Case, judgement: Judgement, settings: Settings, out: Path, progress: Progress
+) -> Judgement:
+    """Add to every `not_needed` the chance that it could have been seen, and save the tables."""
+    from ruleout.rehearsal import Spending, chances_seen
+    from ruleout.store import save_judgement
+
+    spending = Spending(
+        seed=settings.seed, effort="quick", alpha=settings.alpha, workers=settings.workers
+    )
+    judgement = chances_seen(case, judgement, spending, out=out, progress=progress)
+    save_judgement(judgement, case, out)
+    return judgement
 
 
 def _print_json(judgement: object, out: Path) -> None:
