@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import ClassVar
 
 import numpy as np
@@ -9,6 +10,7 @@ import pytest
 
 from ruleout.expressions import parse
 from ruleout.kernel import System, compile_system
+from ruleout.mechanism.types import Fixed, LogUniform
 from ruleout.survey.behaviours import Subject
 from ruleout.survey.behaviours.adaptation import Adaptation
 from ruleout.survey.behaviours.hysteresis import Hysteresis
@@ -216,36 +218,67 @@ def test_hysteresis_needs_the_fold():
     assert score.shown.tolist() == [False, True]
 
 
-def test_thomas_rules_hold_as_hard_zeros_over_all_two_node_gene_networks():
-    """Several stable states need a positive circuit, oscillation needs a negative one
-    (Thomas 1981; proofs Snoussi 1998, Gouze 1998, Soule 2003, doi:10.1159/000076100).
-    """
-    allowed = (((-1, 0, 1),) * 2,) * 2
-    of = Family(
+def gene_family(n: int) -> Family:
+    return Family(
         title="",
         style="gene",
-        nodes=("x", "y"),
+        nodes=tuple("xyz"[:n]),
         output=0,
         source="",
         drives=(),
-        allowed=allowed,
+        allowed=(((-1, 0, 1),) * n,) * n,
         must_reach=False,
-        starts=(0.1, 0.1),
+        starts=(0.1,) * n,
     )
-    signs = enumerate_family(of)
-    plus, minus = circuit_signs(signs)
-    stable, swinging = np.zeros(81, dtype=int), np.zeros(81, dtype=int)
+
+
+def counts(of: Family, signs: np.ndarray, sets: int) -> tuple[np.ndarray, np.ndarray]:
+    """Return how many sets of each network are multistable, and how many oscillate."""
+    stable, swinging = np.zeros(len(signs), dtype=int), np.zeros(len(signs), dtype=int)
     for k, s in enumerate(signs):
         member = Member(of, s)
-        sets = parameter_sets(of, member.parameters, 32, "sobol", 1, label(s))
-        made = member.subject(sets)
+        made = member.subject(parameter_sets(of, member.parameters, sets, "sobol", 1, label(s)))
         stable[k] = Multistability(starts=8).score(made).shown.sum()
         swinging[k] = Oscillation().score(made).shown.sum()
-    assert not stable[~plus].any()
-    assert not swinging[~minus].any()
-    assert stable[plus].any()
-    # With this many sets most of the 53 networks with a positive circuit are seen multistable.
-    assert np.count_nonzero(stable[plus]) > 25
+    return stable, swinging
+
+
+class TestThomasRules:
+    """Several stable states need a positive circuit, oscillation needs a negative one
+    (Thomas 1981; proofs Snoussi 1998, Gouze 1998, Soule 2003, doi:10.1159/000076100).
+    """
+
+    def test_all_two_node_networks(self):
+        of = gene_family(2)
+        signs = enumerate_family(of)
+        plus, minus = circuit_signs(signs)
+        stable, swinging = counts(of, signs, 32)
+        assert not stable[~plus].any()
+        assert not swinging[~minus].any()
+        # With this many sets most of the 53 networks with a positive circuit are multistable.
+        assert np.count_nonzero(stable[plus]) > 25
+
+    @pytest.mark.parametrize(
+        ("networks", "sets"), [(24, 16), pytest.param(400, 128, marks=pytest.mark.slow)]
+    )
+    def test_a_sample_of_three_node_networks(self, networks, sets):
+        of = gene_family(3)
+        signs = enumerate_family(of)
+        plus, minus = circuit_signs(signs)
+        rng = np.random.default_rng(1)
+        for without, which in ((~plus, 0), (~minus, 1)):
+            some = signs[rng.choice(np.flatnonzero(without), networks, replace=False)]
+            assert not counts(of, some, sets)[which].any()
+
+    def test_the_repressilator_oscillates_and_its_positive_twin_does_not(self):
+        """Three repressors in a ring (Elowitz & Leibler 2000, doi:10.1038/35002125)."""
+        of = replace(gene_family(3), ranges={"hill": LogUniform(3.0, 4.0), "basal": Fixed(30.0)})
+        ring = np.array([[0, -1, 0], [0, 0, -1], [-1, 0, 0]], dtype=np.int8)
+        twin = np.array([[0, -1, 0], [0, 0, -1], [1, 0, 0]], dtype=np.int8)
+        stable, swinging = counts(of, np.array([ring, twin]), 64)
+        assert swinging[0] > 0
+        assert swinging[1] == 0
+        assert stable[0] == 0
 
 
 def test_data_are_recognised_up_to_a_scale():

@@ -9,6 +9,7 @@ from itertools import combinations, pairwise, permutations
 import numpy as np
 from numpy.typing import NDArray
 
+from ruleout.survey.enumeration import symmetries
 from ruleout.survey.types import Family, Signs
 
 Flags = NDArray[np.bool_]
@@ -25,10 +26,20 @@ class Features:
     names : tuple of str, length F
         As they stand after 'has': ``A -> B``, ``a negative loop B-C``, ...
     have : (T, F) bool array
+    searched : (F,) bool array or None
+        Which of them statements may be made of; None for all. Others are counted only.
     """
 
     names: tuple[str, ...]
     have: Flags
+    searched: Flags | None = None
+
+    def for_statements(self) -> Features:
+        """Return those that statements may be made of."""
+        if self.searched is None:
+            return self
+        kept = np.flatnonzero(self.searched)
+        return Features(tuple(self.names[k] for k in kept), self.have[:, kept])
 
 
 def circuits(n: int) -> Iterator[Path]:
@@ -99,6 +110,9 @@ def find_features(family: Family, signs: Signs) -> Features:
 
     Notes
     -----
+    Where wirings are counted up to relabelling, nodes that may be exchanged have no names of their
+    own, and features that would need them are left out.
+
     A *proportioner* is a node on the longer one of two paths of opposite sign that leave an input
     node and meet at the output (incoherent feed-forward); a *buffer* is a node off the shortest
     path from input to output through which a negative loop runs that also runs through a node on
@@ -113,22 +127,24 @@ def find_features(family: Family, signs: Signs) -> Features:
         columns[name] = have
 
     nodes, n = family.nodes, len(family.nodes)
-    _add_edges(family, signs, add)
+    named = _named_nodes(family)
+    _add_edges(family, signs, named, add)
     plus, minus = circuit_signs(signs)
     add("a positive loop", plus)
     add("a negative loop", minus)
     for circuit in circuits(n):
         product = circuit_sign(signs, circuit)
         if len(circuit) == 1:
-            name = nodes[circuit[0]]
+            name = nodes[circuit[0]] if named[circuit[0]] else "a node"
             add(f"{name} stimulating itself", product > 0)
             add(f"{name} inhibiting itself", product < 0)
             continue
-        ring = "-".join(nodes[k] for k in circuit)
-        add(f"a positive loop {ring}", product > 0)
-        add(f"a negative loop {ring}", product < 0)
-        add("a positive loop of two nodes or more", product > 0)
-        add("a negative loop of two nodes or more", product < 0)
+        for sign, word in ((1, "positive"), (-1, "negative")):
+            closed = product == sign
+            add(f"a {word} loop of two nodes or more", closed)
+            add(f"a {word} loop of {len(circuit)} nodes", closed)
+            if named[list(circuit)].all():
+                add(f"a {word} loop {'-'.join(nodes[k] for k in circuit)}", closed)
     if family.source:
         _add_feed_forward(family, signs, add)
         off = off_main_path(family, signs)
@@ -140,15 +156,36 @@ def find_features(family: Family, signs: Signs) -> Features:
             product = circuit_sign(signs, circuit)
             add("a negative loop through a buffer node", buffered & (product < 0))
             add("a positive loop through a node off the main path", buffered & (product > 0))
-    seen = {name: have for name, have in columns.items() if have.any() and not have.all()}
-    have = np.stack(list(seen.values()), axis=1) if seen else np.zeros((len(signs), 0), bool)
-    return Features(tuple(seen), have)
+    structural = len(columns)
+    edges = np.count_nonzero(signs, axis=(1, 2))
+    for k in range(1, n * n):
+        add(f"more than {k} edge{'s' if k > 1 else ''}", edges > k)
+    telling = [
+        (name, have, k < structural)
+        for k, (name, have) in enumerate(columns.items())
+        if have.any() and not have.all()
+    ]
+    have = np.stack([h for _, h, _ in telling], axis=1) if telling else np.zeros((len(signs), 0))
+    return Features(
+        names=tuple(name for name, _, _ in telling),
+        have=have.astype(bool),
+        searched=np.array([searched for _, _, searched in telling], dtype=bool),
+    )
 
 
-def _add_edges(family: Family, signs: Signs, add: Add) -> None:
+def _named_nodes(family: Family) -> Flags:
+    """Return which nodes (n,) have a name of their own."""
+    named = np.ones(len(family.nodes), dtype=bool)
+    if family.relabelled:
+        for relabelling in symmetries(family):
+            named &= np.array(relabelling) == np.arange(len(named))
+    return named
+
+
+def _add_edges(family: Family, signs: Signs, named: Flags, add: Add) -> None:
     for i, source in enumerate(family.nodes):
         for j, target in enumerate(family.nodes):
-            if i != j:
+            if i != j and named[i] and named[j]:
                 add(f"{source} -> {target}", signs[:, i, j] > 0)
                 add(f"{source} -| {target}", signs[:, i, j] < 0)
 

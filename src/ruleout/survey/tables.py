@@ -180,9 +180,10 @@ def _principle_table(
     names: list[str],
     settings: Settings,
 ) -> pd.DataFrame:
+    searched = features.for_statements()
     rows = [
-        _principle_row(p, behaviour, features, counts, h, names, settings)
-        for p in find_principles(features, works)
+        _principle_row(p, behaviour, searched, counts, h, names, settings)
+        for p in find_principles(searched, works)
     ]
     columns = [
         "behaviour", "kind", "statement", "literals", "covered", "counterexamples",
