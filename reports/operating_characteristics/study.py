@@ -343,7 +343,9 @@ def _row(cell, run_name, seed, bench, variants, names, found):  # type: ignore[n
     if listed:
         holds = hold_truth(variants, bench.truth)
         t = names.index(bench.truth)
-        wrong = wrong_statements(variants, bench.truth, found["verdict"], found["claim"])
+        wrong = wrong_statements(
+            variants, bench.truth, found["verdict"], found["claim"], found["contains"]
+        )
         row |= {
             "truth_ruled_out": int(ruled_out[:, t].sum()),
             "truth_p_at_most_alpha": int(np.sum(found["p_value"][:, t] <= ALPHA)),

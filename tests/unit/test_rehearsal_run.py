@@ -134,13 +134,21 @@ def test_wrong_statements_are_those_the_design_names(decay: Case) -> None:
         [[word(w)] for w in ("not_needed", "needed", "excluded", "nothing_fits", "undecided")],
         np.int8,
     )
+    contains = np.zeros((5, 2, 2), dtype=bool)
+    contains[:, 1, 0] = True
     np.testing.assert_array_equal(hold_truth(variants, "v1"), [True, True])
     np.testing.assert_array_equal(
-        wrong_statements(variants, "v1", verdict, claim), [False, True, False, True, True]
+        wrong_statements(variants, "v1", verdict, claim, contains), [False, True, False, True, True]
     )
     np.testing.assert_array_equal(hold_truth(variants, "v2"), [False, True])
     np.testing.assert_array_equal(
-        wrong_statements(variants, "v2", verdict, claim), [False, False, True, True, True]
+        wrong_statements(variants, "v2", verdict, claim, contains), [False, False, True, True, True]
+    )
+    # Where no effect is out of the larger one's reach it is a rival, and v2 may be ruled out.
+    contains[:] = False
+    np.testing.assert_array_equal(
+        wrong_statements(variants, "v1", verdict, claim, contains),
+        [False, True, False, True, False],
     )
 
 

@@ -24,38 +24,50 @@ def outcome(settled: Settled) -> Arrays:
     -------
     dict
         ``verdict`` (V,) int8 codes of ``VERDICTS``, ``p_value`` (V,), ``claim`` (C,) int8 codes of
-        ``CLAIM_VERDICTS``; variants and claims in their order.
+        ``CLAIM_VERDICTS``, ``contains`` (V, V) bool: whether the variant of the row contains that
+        of the column, no effect confirmed to be within reach; variants and claims in their order.
     """
+    contains = [[b in settled.contains[a] for b in settled.order] for a in settled.order]
     verdicts = [settled.verdicts[name] for name in settled.order]
     return {
         "verdict": np.array([VERDICTS.index(v.verdict) for v in verdicts], dtype=np.int8),
         "p_value": np.array([v.p_value for v in verdicts]),
         "claim": np.array([CLAIM_VERDICTS.index(c.verdict) for c in settled.claims], dtype=np.int8),
+        "contains": np.array(contains, dtype=bool),
     }
 
 
 def hold_truth(variants: VariantSet, truth: str) -> NDArray[np.bool_]:
-    """Return which variants are the true one or contain it, (V,)."""
+    """Return which variants are the true one or contain it in structure, (V,)."""
     return np.array(
         [name == truth or truth in variants.contains[name] for name in variants.variants]
     )
 
 
 def wrong_statements(
-    variants: VariantSet, truth: str, verdict: NDArray[np.int8], claim: NDArray[np.int8]
+    variants: VariantSet,
+    truth: str,
+    verdict: NDArray[np.int8],
+    claim: NDArray[np.int8],
+    contains: NDArray[np.bool_],
 ) -> NDArray[np.bool_]:
     """Return on which data sets anything asserted is wrong.
 
-    Wrong is: a variant that is or contains the truth ruled out; a claim `needed` that does not
+    Wrong is: a variant that is or contains the truth ruled out (where its priors allow the added
+    choices to have no effect; else it is a rival); a claim `needed` that does not
     hold in the truth, or `excluded` that does; `nothing_fits`, as the truth is among the variants.
 
     Parameters
     ----------
     verdict : (N, V) int8 array of codes of ``VERDICTS``
     claim : (N, C) int8 array of codes of ``CLAIM_VERDICTS``
+    contains : (N, V, V) bool array
+        As found on every data set.
     """
-    ruled_out = verdict == VERDICTS.index(RULED_OUT)
-    wrong = np.any(ruled_out & hold_truth(variants, truth), axis=1)
+    at = list(variants.variants).index(truth)
+    mistaken = contains[:, :, at].copy()
+    mistaken[:, at] = True
+    wrong = np.any((verdict == VERDICTS.index(RULED_OUT)) & mistaken, axis=1)
     holds = np.array([truth in c.holds_in for c in variants.claims], dtype=bool)
     needed, excluded, nothing = (
         claim == CLAIM_VERDICTS.index(word) for word in ("needed", "excluded", "nothing_fits")

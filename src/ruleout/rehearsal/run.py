@@ -254,6 +254,7 @@ def _nothing(variants: VariantSet) -> Arrays:
         "verdict": np.full(v, VERDICTS.index(NOT_JUDGED), dtype=np.int8),
         "p_value": np.full(v, np.nan),
         "claim": np.full(c, CLAIM_VERDICTS.index("undecided"), dtype=np.int8),
+        "contains": np.zeros((v, v), dtype=bool),
     }
 
 
@@ -270,7 +271,8 @@ def _tables(
             pieces = [results[design.name, truth, i] for i in range(data_sets)]
             verdict = np.stack([p["verdict"] for p in pieces]).astype(np.int8)
             claim = np.stack([p["claim"] for p in pieces]).astype(np.int8)
-            rows["size"].append(size_row(design.name, variants, truth, verdict, claim))
+            contains = np.stack([p["contains"] for p in pieces]).astype(bool)
+            rows["size"].append(size_row(design.name, variants, truth, verdict, claim, contains))
             rows["power"] += power_rows(design.name, variants, truth, verdict)
             rows["claims"] += claim_rows(design.name, variants, truth, claim)
     return {name: pd.DataFrame(rows[name], columns=list(COLUMNS[name])) for name in COLUMNS}

@@ -35,6 +35,7 @@ def size_row(
     truth: str,
     verdict: NDArray[np.int8],
     claim: NDArray[np.int8],
+    contains: NDArray[np.bool_],
 ) -> Row:
     """Return how often the true variant was ruled out and anything said was wrong.
 
@@ -42,11 +43,12 @@ def size_row(
     ----------
     verdict, claim : (N, V) and (N, C) int8 arrays
         Codes of ``VERDICTS`` and ``CLAIM_VERDICTS``.
+    contains : (N, V, V) bool array
     """
     n = len(verdict)
     own = verdict[:, list(variants.variants).index(truth)]
     out = int(np.sum(own == VERDICTS.index(RULED_OUT)))
-    wrong = int(np.sum(wrong_statements(variants, truth, verdict, claim)))
+    wrong = int(np.sum(wrong_statements(variants, truth, verdict, claim, contains)))
     return {
         "design": design,
         "truth": truth,
