@@ -272,7 +272,6 @@ def _meta(case: Case, settings: Settings, results: Results) -> dict[str, Any]:
             f"{settings.alpha:g} if: the truth is among these variants and inside their priors, "
             "with one minimal true variant; measurement errors are independent and of the stated "
             "family; and the assumptions printed with the equations hold.",
-            "'Kept' means not ruled out by these data; it never means proven.",
         ],
         "summary": [f"{c.claim.name}: {c.statement}" for c in results.claims],
     }
