@@ -1,4 +1,4 @@
-"""Which wirings of a biological mechanism do the data rule out?
+"""Rule out wirings of a biological mechanism that the data contradict.
 
 Each stage is one verb with one frozen result: :func:`read_case`, :func:`inspect_case`,
 :func:`judge`, :func:`rehearse`, :func:`write_report`, and :func:`ruleout.survey.survey`. They are

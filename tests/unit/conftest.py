@@ -22,11 +22,18 @@ ReadCase = Callable[..., Case]
 def case_of(tmp_path: Path) -> ReadCase:
     """Read a case from the text of its mechanism and, else with one step, its experiments."""
 
-    def read(mechanism: str, experiments: str | None = None, readout: str = "x") -> Case:
+    def read(
+        mechanism: str,
+        experiments: str | None = None,
+        readout: str = "x",
+        data: str | None = None,
+    ) -> Case:
         text = 'title = "test"\ntime_unit = "min"\namount_unit = "uM"\n' + mechanism
         (tmp_path / "mechanism.toml").write_text(text)
         experiments = experiments or EXPERIMENTS.format(readout=readout)
         (tmp_path / "experiments.toml").write_text(experiments)
-        return read_case(tmp_path, require_data=False)
+        if data is not None:
+            (tmp_path / "data.csv").write_text(data)
+        return read_case(tmp_path, require_data=data is not None)
 
     return read
