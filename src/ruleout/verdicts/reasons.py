@@ -30,7 +30,7 @@ def where_it_shows(columns: tuple[Column, ...], observed: Array, replicated: Arr
             continue
         spread = replicated[:, j].std()
         excess = (observed[j] - replicated[:, j].mean()) / spread if spread > 0 else 0.0
-        if excess > best and np.mean(replicated[:, j] >= observed[j]) <= 0.1:
+        if excess > best and np.mean(replicated[:, j] >= observed[j]) <= 0.02:
             low, high = np.quantile(replicated[:, j], [0.05, 0.95])
             word = "undershoots" if kind == "above" else "overshoots"
             best = excess
