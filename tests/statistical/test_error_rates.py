@@ -20,7 +20,7 @@ from ruleout.verdicts import Verdict
 ALPHA = 0.05
 CHANCE = 1e-3
 """Chance that a correct program fails one of these tests on another seed."""
-DATA_SETS = 120
+DATA_SETS = 100
 
 MECHANISM = """
 title = "One or two steps of decay"
