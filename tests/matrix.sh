@@ -31,6 +31,7 @@ for version in 3.11 3.12 3.13; do
       continue
     fi
     echo "== $python, $resolution dependencies"
-    "$env/bin/python" -m pytest
+    # What the linters say depends on their own versions, not on ours.
+    "$env/bin/python" -m pytest --ignore=tests/unit/test_house.py
   done
 done
