@@ -292,3 +292,10 @@ def test_data_are_recognised_up_to_a_scale():
     assert score.shown.tolist() == [True, False]
     assert score.measures["scale"][0] == pytest.approx(7.0, rel=1e-4)
     assert score.measures["distance"][0] < 1e-4
+
+
+def test_amounts_below_zero_are_not_judged():
+    """x' = u - 2 - x rests at -1: no amount, so no evidence that it adapts (nor that it does not)."""
+    made = subject({"x": "input_u - 2 - k * x"}, "x", start=[0.1], k=[1.0], **{U: [1.0]})
+    for behaviour in (Adaptation(), Pulse(), Switch(), Hysteresis(), Multistability(level=1.0)):
+        assert not behaviour.score(made).judged.any()

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, ClassVar, Protocol
 
@@ -20,6 +20,9 @@ Flags = NDArray[np.bool_]
 
 RTOL = 1e-5
 ATOL = 1e-10
+BELOW_ZERO = -1e-8
+"""Amounts below this are a numerical accident, in which nothing is judged: a node that raises only
+itself can grow on either side of zero, and rounding decides which once it has come near."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -122,7 +125,8 @@ def rest(subject: Subject, p: Array, start: Array | None = None) -> tuple[Array,
     """
     y0 = np.broadcast_to(subject.start, (len(p), len(subject.start))) if start is None else start
     found = subject.program.steady(y0, p)
-    return found.states, found.status == Status.OK, found.stable
+    settled = (found.status == Status.OK) & (found.states >= BELOW_ZERO).all(axis=1)
+    return found.states, settled, found.stable
 
 
 def plain_course(subject: Subject, times: Array) -> Course:
@@ -140,8 +144,20 @@ def plain_course(subject: Subject, times: Array) -> Course:
 
 def course(subject: Subject, y0: Array, p: Array, times: Array) -> tuple[Array, Flags]:
     """Return the states (M, K, N) at ``times`` from ``y0`` (M, N) on, and whether all went well."""
-    found = subject.program.solve(y0, p, [plain_course(subject, times)], rtol=RTOL, atol=ATOL)
-    return found.states, found.status == Status.OK
+    return solve(subject, y0, p, [plain_course(subject, times)])
+
+
+def solve(
+    subject: Subject,
+    y0: Array,
+    p: Array,
+    courses: Sequence[Course],
+    which: NDArray[np.int64] | None = None,
+) -> tuple[Array, Flags]:
+    """Return states along each row's own course, and whether all went well."""
+    found = subject.program.solve(y0, p, courses, which, rtol=RTOL, atol=ATOL)
+    sound = (found.states >= BELOW_ZERO) | np.isnan(found.states)
+    return found.states, (found.status == Status.OK) & sound.all(axis=(1, 2))
 
 
 def unknown(count: int) -> Array:

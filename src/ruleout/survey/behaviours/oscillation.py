@@ -13,15 +13,13 @@ from typing import ClassVar, Final
 import numpy as np
 from numpy.typing import NDArray
 
-from ruleout.kernel import Status
 from ruleout.survey.behaviours.base import (
-    ATOL,
-    RTOL,
     Array,
     Score,
     Subject,
     plain_course,
     rest,
+    solve,
     unknown,
 )
 from ruleout.survey.behaviours.traces import Trace, flow_trace
@@ -82,11 +80,8 @@ class Oscillation:
         for _ in range(ROUNDS):
             if not len(live):
                 break
-            found = subject.program.solve(
-                y[live], p[live], courses, length[live], rtol=RTOL, atol=ATOL
-            )
-            solved = found.status == Status.OK
-            live, states = live[solved], found.states[solved]
+            states, solved = solve(subject, y[live], p[live], courses, length[live])
+            live, states = live[solved], states[solved]
             y[live] = states[:, -1]
             window = look_at(states[:, :, subject.output])
             fits = (window.periods >= FEWEST_PERIODS) & (window.periods <= MOST_PERIODS)

@@ -11,8 +11,8 @@ from typing import ClassVar
 
 import numpy as np
 
-from ruleout.kernel import Protocol, Status
-from ruleout.survey.behaviours.base import ATOL, RTOL, Array, Score, Subject, rest, unknown
+from ruleout.kernel import Protocol
+from ruleout.survey.behaviours.base import Array, Score, Subject, rest, solve, unknown
 from ruleout.survey.behaviours.traces import POINTS, Trace
 
 
@@ -75,11 +75,10 @@ class Resemblance:
         first, settled, _ = rest(subject, subject.at_input(self.resting))
         rows = np.flatnonzero(settled)
         output = np.full((len(first), len(times)), np.nan)
-        found = subject.program.solve(
-            first[rows], subject.p[rows], [self._course(subject, times)], rtol=RTOL, atol=ATOL
+        states, solved = solve(
+            subject, first[rows], subject.p[rows], [self._course(subject, times)]
         )
-        solved = found.status == Status.OK
-        output[rows[solved]] = found.states[solved][:, :, subject.output]
+        output[rows[solved]] = states[solved][:, :, subject.output]
         return output, np.isfinite(output).all(axis=1)
 
     def _course(self, subject: Subject, times: Array) -> Protocol:

@@ -14,10 +14,7 @@ from typing import ClassVar, Final
 
 import numpy as np
 
-from ruleout.kernel import Status
 from ruleout.survey.behaviours.base import (
-    ATOL,
-    RTOL,
     Array,
     Flags,
     Score,
@@ -26,6 +23,7 @@ from ruleout.survey.behaviours.base import (
     first_crossing,
     plain_course,
     rest,
+    solve,
     unknown,
 )
 from ruleout.survey.behaviours.traces import Trace, step_trace
@@ -65,13 +63,10 @@ def response_times(
     here = states[hit][np.arange(len(rows)), k]
     spans = [np.linspace(0.0, length, _FINE) for length in np.diff(_COARSE)]
     if len(rows):
-        found = subject.program.solve(
-            here, p, [plain_course(subject, s) for s in spans], k, rtol=RTOL, atol=ATOL
-        )
-        fine = first_crossing(np.arange(_FINE, dtype=float), found.states[:, :, out], middle)
-        length = np.diff(_COARSE)[k]
-        times[rows] = _COARSE[k] + length * fine / (_FINE - 1)
-        judged[rows[found.status != Status.OK]] = False
+        fine_states, solved = solve(subject, here, p, [plain_course(subject, s) for s in spans], k)
+        fine = first_crossing(np.arange(_FINE, dtype=float), fine_states[:, :, out], middle)
+        times[rows] = _COARSE[k] + np.diff(_COARSE)[k] * fine / (_FINE - 1)
+        judged[rows[~solved]] = False
     return times, judged
 
 
