@@ -139,6 +139,7 @@ def scipy_run(problem: Problem, solver: str, *, compiled: bool) -> Run:
         sets = [tuple(p) for p in sets.tolist()]  # type: ignore[assignment]
     grid = np.concatenate([[0.0], problem.times])
     span = (0.0, problem.times[-1])
+    exact_shape = (len(problem.times), len(problem.start))
 
     def run(rtol: float) -> tuple[float, Array]:
         atol = rtol * problem.small
@@ -159,7 +160,7 @@ def scipy_run(problem: Problem, solver: str, *, compiled: bool) -> Run:
             done = solve_ivp(
                 slopes, span, problem.start, "LSODA", problem.times, args=(p,), rtol=rtol, atol=atol
             )
-            return np.asarray(done.y.T)
+            return np.asarray(done.y.T) if done.success else np.full(exact_shape, np.nan)
 
         states = np.array([one(p) for p in sets])
         return best_time(lambda: [one(p) for p in sets]) / len(sets), states
@@ -219,16 +220,22 @@ def measure(problem: Problem, rows: int, folder: Path) -> dict[str, list[dict[st
         for rtol in RTOLS:
             seconds, states = run(rtol)
             error = error_of(states, exact)
+            if not np.isfinite(error):
+                print(f"{NAMES[name]} fails at rtol {rtol:g}: left out")
+                continue
             curves[name].append({"rtol": rtol, "microseconds": seconds * 1e6, "error": error})
     return curves
 
 
 def time_at(curve: list[dict[str, float]], error: float) -> float:
-    """Return the microseconds at ``error``, interpolated in logarithms; NaN outside the curve."""
+    """Return the microseconds at ``error``, interpolated in logarithms.
+
+    For an error beyond its loosest tolerance, a solver's time there; NaN beyond its tightest.
+    """
     x = np.log([point["error"] for point in curve])[::-1]
     y = np.log([point["microseconds"] for point in curve])[::-1]
     order = np.argsort(x)
-    inside = np.interp(np.log(error), x[order], y[order], left=np.nan, right=np.nan)
+    inside = np.interp(np.log(error), x[order], y[order], left=np.nan)
     return float(np.exp(inside))
 
 

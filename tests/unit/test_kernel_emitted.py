@@ -18,7 +18,7 @@ from ruleout.kernel.memory import Lanes, aligned_zeros
 from ruleout.kernel.steps import STEP_FUNCTIONS, SYSTEM_FUNCTIONS, Control, Setting
 
 Array = NDArray[np.float64]
-WIDTHS = (1, 2, 4, 8)
+WIDTHS = (1, 2, 4, 8, 16)
 
 
 class Machine:

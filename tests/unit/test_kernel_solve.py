@@ -357,7 +357,7 @@ def test_where_no_code_can_be_made_the_kernel_is_interpreted(
         raise OSError("cannot allocate executable memory")
 
     monkeypatch.setattr("ruleout.kernel.engine.MachineCode", refuse)
-    monkeypatch.setattr("ruleout.kernel.engine._step_code", refuse)
+    monkeypatch.setattr("ruleout.kernel.engine._shared_code", refuse)
     with pytest.warns(RuntimeWarning, match="executable memory"):
         program = Program(DECAY)
     solution = program.solve([[1.0]], [[0.0, 1.0]], [protocol([1.0], 1, 2)])

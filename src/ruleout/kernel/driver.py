@@ -68,23 +68,29 @@ _NEWTON_EXACT = 1e-14
 
 
 @compiled
+def _in_vectors(at: int, lane: int, members: int) -> int:
+    """Return the index of ``lane`` in the first of ``members`` vectors per vector of lanes."""
+    shift = read_int(at, Place.WIDTH_BITS)
+    width = 1 << shift
+    return ((lane >> shift) * members << shift) + (lane & (width - 1))
+
+
+@compiled
 def _control(at: int, lane: int, entry: int) -> float:
-    width = read_int(at, Place.WIDTH)
-    return number(at, Place.CONTROL, (lane // width * _CONTROLS + entry) * width + lane % width)
+    first = _in_vectors(at, lane, _CONTROLS)
+    return number(at, Place.CONTROL, first + (entry << read_int(at, Place.WIDTH_BITS)))
 
 
 @compiled
 def _set_control(at: int, lane: int, entry: int, value: float) -> None:
-    width = read_int(at, Place.WIDTH)
-    set_number(at, Place.CONTROL, (lane // width * _CONTROLS + entry) * width + lane % width, value)
+    first = _in_vectors(at, lane, _CONTROLS)
+    set_number(at, Place.CONTROL, first + (entry << read_int(at, Place.WIDTH_BITS)), value)
 
 
 @compiled
 def _in_y(at: int, lane: int) -> int:
     """Return the address of the first state in ``lane``; the next are ``width`` apart."""
-    width = read_int(at, Place.WIDTH)
-    first = lane // width * 2 * read_int(at, Place.N) * width + lane % width
-    return read_int(at, Place.Y) + 8 * first
+    return read_int(at, Place.Y) + 8 * _in_vectors(at, lane, 2 * read_int(at, Place.N))
 
 
 @compiled
@@ -108,7 +114,7 @@ def _largest(at: int, lane: int) -> float:
 @compiled
 def _load_parameters(at: int, lane: int, b: int, s: int) -> None:
     width, p = read_int(at, Place.WIDTH), read_int(at, Place.P)
-    first = lane // width * p * width + lane % width
+    first = _in_vectors(at, lane, p)
     for i in range(p):
         value = number(at, Place.FACTOR, s * p + i) * number(at, Place.ROW_P, b * p + i)
         set_number(at, Place.Q, first + i * width, value + number(at, Place.SHIFT, s * p + i))
@@ -445,9 +451,9 @@ def integrate(
                 _polish(at, bits)
             for w in range(width):
                 lane = v * width + w
-                slot = lane // group
-                if (bits >> w) & 1 == 0 or lane != slot * group:
+                if (bits >> w) & 1 == 0 or lane % group:
                     continue
+                slot = lane // group
                 g = whole(at, Place.HOLDS, slot)
                 verdict = whole(at, Place.STATUS, g * group)
                 arrived = _control(at, lane, Control.TIME) == _control(at, lane, Control.STOP)

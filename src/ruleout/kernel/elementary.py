@@ -12,7 +12,7 @@ Birkhauser 2016, doi:10.1007/978-1-4899-7983-4: the series used.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from math import factorial, log, pi
 from typing import Final
 
@@ -31,8 +31,17 @@ _LOG_TERMS: Final = 9
 _EXP_TERMS: Final = 14
 
 
+FUNCTIONS: Final = ("exp", "log", "log_positive", "sin", "cos", "tanh")
+
+
 class Elementary:
-    """Emits calls to the functions, and each function's body at :meth:`finish`.
+    """Emits calls to the functions, or their bodies.
+
+    Parameters
+    ----------
+    assembly : Assembly
+    addresses : mapping of name to int, optional
+        Where the functions are, if another module has them; else this one must :meth:`write_all`.
 
     Attributes
     ----------
@@ -40,31 +49,31 @@ class Elementary:
         Whether bodies are written in place of calls: faster to run, slower to compile.
     """
 
-    def __init__(self, assembly: Assembly) -> None:
+    def __init__(self, assembly: Assembly, addresses: Mapping[str, int] | None = None) -> None:
         self.inline = False
         self._assembly = assembly
-        self._wanted: dict[str, Callable[[Value], Value]] = {}
+        self._addresses = addresses
 
-    def call(self, name: str, *arguments: Value) -> Value:
-        """Return function ``name`` (exp, log, log_positive, sin, cos, tanh) of a value."""
-        body: Callable[[Value], Value] = getattr(self, f"_{name}")
+    def call(self, name: str, x: Value) -> Value:
+        """Return function ``name``, one of :data:`FUNCTIONS`, of a value."""
         if self.inline:
-            return body(*arguments)
+            return self._body(name, x)
         kind = self._assembly.doubles
-        self._wanted[name] = body
-        return self._assembly.emit(
-            f"call {kind} @{name}({', '.join(f'{kind} {a}' for a in arguments)})"
-        )
+        callee = f"@{name}"
+        if self._addresses:
+            callee = f"inttoptr (i64 {self._addresses[name]} to ptr)"
+        return self._assembly.emit(f"call {kind} {callee}({kind} {x})")
 
-    def finish(self) -> None:
-        """Write the bodies of all functions called so far."""
+    def write_all(self) -> None:
+        """Write all functions."""
         kind = self._assembly.doubles
-        done: set[str] = set()
-        while missing := [name for name in self._wanted if name not in done]:
-            name = missing[0]
-            done.add(name)
-            with self._assembly.function(name, [f"{kind} %x"], kind):
-                self._assembly.give(kind, self._wanted[name]("%x"))
+        for name in FUNCTIONS:
+            with self._assembly.function(f"export_{name}", [f"{kind} %x"], kind):
+                self._assembly.give(kind, self._body(name, "%x"))
+
+    def _body(self, name: str, x: Value) -> Value:
+        body: Callable[[Value], Value] = getattr(self, f"_{name}")
+        return body(x)
 
     def power(self, log_x: Value, y: Value) -> Value:
         """Return x ** y for positive x, given its logarithm."""

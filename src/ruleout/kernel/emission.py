@@ -110,16 +110,22 @@ class Emission:
     Parameters
     ----------
     assembly : Assembly
+    elementary : Elementary
     lowered : Lowered
     totals, pivots
         Conserved totals, as from :func:`~ruleout.kernel.conservation.conserved_totals`.
     """
 
     def __init__(
-        self, assembly: Assembly, lowered: Lowered, totals: Array, pivots: tuple[int, ...]
+        self,
+        assembly: Assembly,
+        elementary: Elementary,
+        lowered: Lowered,
+        totals: Array,
+        pivots: tuple[int, ...],
     ) -> None:
         self._assembly = assembly
-        self._elementary = Elementary(assembly)
+        self._elementary = elementary
         self._lowered = lowered
         self._graph = part(lowered)
         self._slot = {node: i for i, node in enumerate(self._graph.prepared)}
@@ -129,14 +135,13 @@ class Emission:
         self.factors = 0
 
     def write(self) -> None:
-        """Write all functions of the system, then the elementary functions they use."""
+        """Write all functions of the system."""
         self._write_prepare()
         self._write_slopes()
         self._write_factor("factor", within_totals=False)
         if self._pivots:
             self._write_factor("newton_factor", within_totals=True)
         self._write_residual()
-        self._elementary.finish()
 
     def _write_prepare(self) -> None:
         """Write ``prepare(q, c)``: the parameter-only part."""

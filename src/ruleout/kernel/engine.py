@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from ruleout.kernel.assembly import Assembly
+from ruleout.kernel.elementary import FUNCTIONS, Elementary
 from ruleout.kernel.emission import Emission
 from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.schedule import Integers
@@ -65,37 +66,41 @@ class SystemCode:
         self, lowered: Lowered, totals: Array, pivots: tuple[int, ...], width: int | None = None
     ) -> None:
         self.width = width or host_width()
+        self._shared = _shared_code(self.width)
+        known = self._shared.addresses.tolist()
+        elementary = dict(zip(FUNCTIONS, known[len(STEP_FUNCTIONS) :], strict=True))
         assembly = Assembly(self.width)
-        emission = Emission(assembly, lowered, totals, pivots)
+        emission = Emission(assembly, Elementary(assembly, elementary), lowered, totals, pivots)
         emission.write()
         names = list(SYSTEM_FUNCTIONS)
         if not pivots:
             names = [name.replace("newton_factor", "factor") for name in names]
         self._system = MachineCode(assembly.text(), names, effort=0)
-        self._steps = _step_code(self.width)
         self.functions = self._system.addresses
-        self.steps = self._steps.addresses
+        self.steps = self._shared.addresses[: len(STEP_FUNCTIONS)]
         self.prepared = emission.prepared
         self.scratch = scratch_vectors(len(lowered.states), emission.factors)
 
 
 @lru_cache(maxsize=4)
-def _step_code(width: int) -> MachineCode:
+def _shared_code(width: int) -> MachineCode:
+    """Return the code that all systems share: steps, then elementary functions."""
     assembly = Assembly(width)
     Steps(assembly).write()
-    return MachineCode(assembly.text(), STEP_FUNCTIONS, effort=2)
+    return MachineCode(assembly.text(), (*STEP_FUNCTIONS, *FUNCTIONS), effort=2)
 
 
 def host_width() -> int:
-    """Return how many doubles this host handles at once."""
+    """Return how many lanes suit this host: two of its vectors.
+
+    Elementary functions are long chains of dependent operations; two side by side fill the gaps.
+    """
     import llvmlite.binding as llvm
 
     features = llvm.get_host_cpu_features()
     if features.get("avx512f") and features.get("avx512dq"):
-        return 8
-    if features.get("avx2"):
-        return 4
-    return 2
+        return 16
+    return 8 if features.get("avx2") else 4
 
 
 def _machine() -> Any:

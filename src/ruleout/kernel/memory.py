@@ -19,56 +19,57 @@ RUNNING = -1
 class Place(IntEnum):
     """Entries of the directory: where the arrays are, and how large.
 
-    N, P, W and V are the numbers of states, parameters, lanes in a vector and vectors; B rows come
-    in groups.
+    N, P, W and V are the numbers of states, parameters, lanes in a vector and vectors; W is two
+    to the power WIDTH_BITS. B rows come in groups.
     """
 
     WIDTH = 0
-    VECTORS = 1
-    N = 2
-    P = 3
+    WIDTH_BITS = 1
+    VECTORS = 2
+    N = 3
+    P = 4
     # Lanes: (V, 2 N, W), (V, P, W), (V, len(Control), W) doubles; per vector the addresses that
     # emitted functions take; the group in each slot, the lanes of each vector that need care;
     # addresses of the step functions.
-    Y = 4
-    Q = 5
-    CONTROL = 6
-    BLOCKS = 7
-    HOLDS = 8
-    BITS = 9
-    STEP_CODE = 10
+    Y = 5
+    Q = 6
+    CONTROL = 7
+    BLOCKS = 8
+    HOLDS = 9
+    BITS = 10
+    STEP_CODE = 11
     # One more vector, for Newton's method on the first one's parameters.
-    NEWTON_Y = 11
-    NEWTON_START = 12
-    NEWTON_CONTROL = 13
-    NEWTON_BLOCKS = 14
+    NEWTON_Y = 12
+    NEWTON_START = 13
+    NEWTON_CONTROL = 14
+    NEWTON_BLOCKS = 15
     # The arrays of a Plan.
-    SEGMENT_AT = 15
-    TIME_AT = 16
-    BREAKS = 17
-    FACTOR = 18
-    SHIFT = 19
-    KEEP = 20
-    ADD = 21
-    TIMES = 22
-    ENDLESS = 23
+    SEGMENT_AT = 16
+    TIME_AT = 17
+    BREAKS = 18
+    FACTOR = 19
+    SHIFT = 20
+    KEEP = 21
+    ADD = 22
+    TIMES = 23
+    ENDLESS = 24
     # Rows: states, parameters, outputs, status and steps of each; protocol, segment, next output,
     # time, step, time at the last look at progress and largest state at the start of each group.
-    ROW_Y = 24
-    ROW_P = 25
-    STATES = 26
-    STATUS = 27
-    ROW_STEPS = 28
-    WHICH = 29
-    SEGMENT = 30
-    OUTPUT = 31
-    ROW_TIME = 32
-    ROW_STEP = 33
-    MARK = 34
-    STARTED = 35
-    GROUP = 36
-    RECORDED = 37
-    OUTPUTS = 38
+    ROW_Y = 25
+    ROW_P = 26
+    STATES = 27
+    STATUS = 28
+    ROW_STEPS = 29
+    WHICH = 30
+    SEGMENT = 31
+    OUTPUT = 32
+    ROW_TIME = 33
+    ROW_STEP = 34
+    MARK = 35
+    STARTED = 36
+    GROUP = 37
+    RECORDED = 38
+    OUTPUTS = 39
 
 
 class Rows:
@@ -163,6 +164,7 @@ class Lanes:
         self._newton_blocks = np.array(shared, dtype=np.int64)
         self._directory = [
             width,
+            width.bit_length() - 1,
             vectors,
             n,
             p,

@@ -104,14 +104,14 @@ class Steps:
         self._elementary = Elementary(assembly)
 
     def write(self) -> None:
-        """Write all of :data:`STEP_FUNCTIONS` and what they call."""
+        """Write all of :data:`STEP_FUNCTIONS` and the elementary functions."""
         self._write_start()
         self._write_explicit()
         self._write_implicit()
         self._write_commit("commit_explicit", 2)
         self._write_commit("commit_implicit", 1)
         self._write_newton()
-        self._elementary.finish()
+        self._elementary.write_all()
 
     def _write_start(self) -> None:
         """Prepared values for all lanes; slopes and first step for fresh ones.
