@@ -91,6 +91,15 @@ def test_a_rehearsal_depends_on_its_seed_only_and_goes_on_where_it_stopped(
     assert judged == [0]
 
 
+@pytest.mark.slow
+def test_the_number_of_workers_changes_nothing(decay: Case, tmp_path: Path) -> None:
+    one, two = (
+        rehearse(decay, Spending(workers=w, effort="quick"), out=tmp_path / str(w), data_sets=2)
+        for w in (1, 2)
+    )
+    same(one, two)
+
+
 def test_tables_count_what_was_judged(decay: Case, tmp_path: Path) -> None:
     found = rehearse(decay, Spending(effort="quick"), out=tmp_path, truths=["v2"], data_sets=SETS)
     assert tuple(found.size.columns) == COLUMNS["size"]
