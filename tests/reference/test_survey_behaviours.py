@@ -295,7 +295,7 @@ def test_data_are_recognised_up_to_a_scale():
 
 
 def test_amounts_below_zero_are_not_judged():
-    """x' = u - 2 - x rests at -1: no amount, so no evidence that it adapts (nor that it does not)."""
+    """x' = u - 2 - x rests at -1, which is no amount: no evidence either way."""
     made = subject({"x": "input_u - 2 - k * x"}, "x", start=[0.1], k=[1.0], **{U: [1.0]})
     for behaviour in (Adaptation(), Pulse(), Switch(), Hysteresis(), Multistability(level=1.0)):
         assert not behaviour.score(made).judged.any()
