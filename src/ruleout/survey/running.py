@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wait
+from concurrent.futures.process import BrokenProcessPool
 from multiprocessing import get_context
 from pathlib import Path
 from typing import Any, Final
@@ -12,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ruleout import __version__
-from ruleout.errors import InputError
+from ruleout.errors import InputError, RuleoutError
 from ruleout.progress import Progress, Silent
 from ruleout.seeds import generator
 from ruleout.store import Store, digest
@@ -166,6 +167,11 @@ def _computed(
                 break
             for future in wait(running, return_when=FIRST_COMPLETED).done:
                 yield running.pop(future), future.result()
+    except BrokenProcessPool as error:
+        raise RuleoutError(
+            "a worker process ended unexpectedly, most often for lack of memory; finished "
+            "topologies are kept: give the same command again, with fewer --workers"
+        ) from error
     finally:
         pool.shutdown(wait=False, cancel_futures=True)
 
