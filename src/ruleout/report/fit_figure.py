@@ -100,7 +100,9 @@ def _draw_panel(axes: Axes, panel: Panel, styles: Mapping[str, tuple[str, str]])
         red = VERDICT_COLOURS["ruled_out"]
         for spine in axes.spines.values():
             spine.set(visible=True, color=red, linewidth=1.0)
-        failed = f"{VERDICT_SIGNS['ruled_out']} {', '.join(panel.fails)}"
+        # More words than two would run into the condition's name.
+        more = ", …" if len(panel.fails) > 2 else ""
+        failed = f"{VERDICT_SIGNS['ruled_out']} {', '.join(panel.fails[:2])}{more}"
         axes.set_title(failed, loc="right", pad=3, color=red, fontsize=6)
 
 
