@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 from collections.abc import Iterable
 from difflib import get_close_matches
 
@@ -40,3 +41,17 @@ def did_you_mean(given: str, allowed: Iterable[str]) -> str:
     """Return `` (did you mean 'x'?)`` for the nearest allowed word, or an empty string."""
     near = get_close_matches(given, list(allowed), n=1, cutoff=0.6)
     return f" (did you mean '{near[0]}'?)" if near else ""
+
+
+def lacks_room(error: BaseException) -> bool:
+    """Tell whether a write failed for want of space: a full disk, a quota, a limit on files."""
+    codes = (errno.ENOSPC, errno.EFBIG, errno.EDQUOT)
+    seen: BaseException | None = error
+    while seen is not None:
+        if isinstance(seen, OSError) and seen.errno in codes:
+            return True
+        # HDF5 has the number in its message only.
+        if any(f"errno = {code}," in str(seen) for code in codes):
+            return True
+        seen = seen.__cause__ or seen.__context__
+    return False

@@ -17,6 +17,9 @@ class Progress(Protocol):
     def finish(self, step: str) -> None:
         """Report that ``step`` is over, possibly before all its units were needed."""
 
+    def say(self, message: str) -> None:
+        """Tell ``message``, a whole sentence."""
+
 
 class Silent:
     """A :class:`Progress` that says nothing."""
@@ -28,4 +31,7 @@ class Silent:
         """Do nothing."""
 
     def finish(self, step: str) -> None:
+        """Do nothing."""
+
+    def say(self, message: str) -> None:
         """Do nothing."""

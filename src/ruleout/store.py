@@ -1,33 +1,39 @@
 """The run folder: finished pieces, safely written, found again, redone when out of date.
 
-Every piece is a ``.npz`` archive under ``stages/`` that carries the digest of all it depends on.
-It is written aside, flushed and renamed, so that a killed run leaves whole pieces or none; the
-archive's checksums reveal a truncated or altered one. A piece whose digest no longer matches is
-redone.
+Every piece is a ``.npz`` archive under ``stages/`` that carries the digest of all it depends on and
+a seal over its content. It is written aside, flushed and renamed, so that a killed run leaves whole
+pieces or none; a broken seal reveals a truncated or altered one. A piece whose digest no longer
+matches is redone.
 """
 
 from __future__ import annotations
 
 import contextlib
-import errno
 import hashlib
 import json
 import os
 import tempfile
-import zipfile
-from collections.abc import Callable, Iterator, Mapping
+from collections import Counter
+from collections.abc import Callable, Iterable, Iterator, Mapping
+from contextvars import ContextVar
+from functools import cache
+from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pandas as pd
 
+from ruleout import __version__
 from ruleout.case import Case, read_case
-from ruleout.errors import InputError, RuleoutError
+from ruleout.errors import InputError, RuleoutError, lacks_room
+from ruleout.progress import Progress
 from ruleout.verdicts.types import COLUMNS, Judgement
 
 Arrays = Mapping[str, np.ndarray[Any, Any]]
 TABLES = tuple(COLUMNS)
+ASIDE = ".aside-"
+"""How the names of files begin that are not finished yet."""
 
 
 def digest(*parts: object) -> str:
@@ -39,33 +45,44 @@ def digest(*parts: object) -> str:
     return whole.hexdigest()
 
 
+@cache
+def software() -> tuple[str, ...]:
+    """Return the versions that the numbers depend on: ours and those of the libraries."""
+    libraries = ("numpy", "scipy", "emcee", "numba", "llvmlite", "arviz", "networkx")
+    return (__version__, *(f"{name} {version(name)}" for name in libraries))
+
+
 def write_aside(path: Path, write: Callable[[Path], None]) -> None:
     """Call ``write`` on a temporary file beside ``path``, flush it and rename it there.
 
     Raises
     ------
     RuleoutError
-        If the disk is full or the folder cannot be written; what stood at ``path`` stays.
+        If there is no room left; what stood at ``path`` stays.
     """
-    path.parent.mkdir(parents=True, exist_ok=True)
-    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.stem}-", suffix=path.suffix)
-    os.close(handle)
-    aside = Path(name)
+    aside: Path | None = None
     try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        handle, name = tempfile.mkstemp(
+            dir=path.parent, prefix=f"{ASIDE}{path.stem}-", suffix=path.suffix
+        )
+        os.close(handle)
+        aside = Path(name)
         write(aside)
         with open(aside, "rb") as file:
             os.fsync(file.fileno())
         aside.chmod(0o644)
         aside.replace(path)
-    except OSError as error:
-        if error.errno in (errno.ENOSPC, errno.EFBIG, errno.EDQUOT):
+    except Exception as error:
+        if lacks_room(error):
             raise RuleoutError(
                 f"no room left to write {path.name} in {path.parent}; what was there stays valid. "
                 "Free some space and run the same command again to go on"
             ) from error
         raise
     finally:
-        aside.unlink(missing_ok=True)
+        if aside is not None:
+            aside.unlink(missing_ok=True)
 
 
 class Store:
@@ -89,33 +106,68 @@ class Store:
 
     def get(self, key: str, fingerprint: str) -> dict[str, np.ndarray[Any, Any]] | None:
         """Return the piece, or None if it is missing, out of date or damaged."""
-        path = self.path(key)
         try:
-            with open(path, "rb") as file, np.load(file, allow_pickle=False) as archive:
-                if str(archive["digest"]) != fingerprint:
-                    self.outdated.append(key)
-                    return None
-                return {name: archive[name] for name in archive.files if name != "digest"}
+            with open(self.path(key), "rb") as file, np.load(file, allow_pickle=False) as archive:
+                arrays = {name: archive[name] for name in archive.files}
+            stored, seal = str(arrays.pop("digest")), str(arrays.pop("seal"))
         except FileNotFoundError:
             return None
-        except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile):
+        except Exception:
+            # Damage shows in whatever way the bytes happen to fail: the remedy is always the same.
             self.damaged.append(key)
             return None
+        if seal != _seal(stored, arrays):
+            self.damaged.append(key)
+            return None
+        if stored != fingerprint:
+            self.outdated.append(key)
+            return None
+        return arrays
 
     def put(self, key: str, fingerprint: str, arrays: Arrays) -> None:
         """Write the piece."""
+        marks = {"digest": np.array(fingerprint), "seal": np.array(_seal(fingerprint, arrays))}
 
         def write(path: Path) -> None:
             with open(path, "wb") as file:
-                np.savez(file, digest=np.array(fingerprint), **arrays)  # type: ignore[arg-type]
-                file.flush()
+                np.savez(file, **marks, **arrays)  # type: ignore[arg-type]
 
         write_aside(self.path(key), write)
+
+    def tell_redone(self, progress: Progress) -> None:
+        """Say which pieces of an earlier run were made again, and why."""
+        for keys, state in (
+            (self.outdated, "out of date (an input, a setting or a version has changed)"),
+            (self.damaged, "damaged"),
+        ):
+            if keys:
+                progress.say(f"Made again because {state}: {_by_folder(keys)}.")
+
+
+def _seal(fingerprint: str, arrays: Arrays) -> str:
+    whole = hashlib.sha256(fingerprint.encode())
+    for name in sorted(arrays):
+        array = np.ascontiguousarray(arrays[name])
+        whole.update(f"\x1e{name}\x1e{array.dtype.str}\x1e{array.shape}\x1e".encode())
+        whole.update(array.tobytes())
+    return whole.hexdigest()
+
+
+def _by_folder(keys: Iterable[str]) -> str:
+    """Return how many pieces of which variant, such as ``12 of v1, 3 of v2, inspection``."""
+    counts = Counter(key.rpartition("/")[0] for key in keys)
+    alone = [key for key in keys if "/" not in key]
+    return ", ".join([f"{n} of {folder}" for folder, n in counts.items() if folder] + alone)
+
+
+_held: ContextVar[frozenset[Path]] = ContextVar("held run folders", default=frozenset())
 
 
 @contextlib.contextmanager
 def locked(folder: Path) -> Iterator[None]:
-    """Hold the run folder for this process.
+    """Hold the run folder for this run; what it calls in turn may hold it again.
+
+    What an earlier run left unfinished is removed.
 
     Raises
     ------
@@ -124,6 +176,9 @@ def locked(folder: Path) -> Iterator[None]:
     """
     import fcntl
 
+    if folder.resolve() in _held.get():
+        yield
+        return
     try:
         folder.mkdir(parents=True, exist_ok=True)
         lock = open(folder / ".lock", "w")  # noqa: SIM115 - held until the end of the block
@@ -140,7 +195,13 @@ def locked(folder: Path) -> Iterator[None]:
                 "another run is writing to this folder; wait for it or choose another with --out",
                 where=str(folder),
             ) from None
-        yield
+        for left_over in folder.rglob(f"{ASIDE}*"):
+            left_over.unlink(missing_ok=True)
+        before = _held.set(_held.get() | {folder.resolve()})
+        try:
+            yield
+        finally:
+            _held.reset(before)
 
 
 def save_judgement(judgement: Judgement, case: Case, folder: Path) -> None:

@@ -9,7 +9,7 @@ from contextlib import contextmanager
 
 import typer
 
-from ruleout.errors import RuleoutError
+from ruleout.errors import RuleoutError, lacks_room
 
 INTERRUPTED = 130
 
@@ -34,6 +34,9 @@ def guarded(kept: str = "Nothing was changed.") -> Iterator[None]:
     except (typer.Exit, SystemExit):
         raise
     except Exception as error:
+        if lacks_room(error):
+            typer.echo(f"ruleout: no room left to write. {kept}", err=True)
+            raise typer.Exit(1) from error
         traceback.print_exc(file=sys.stderr)
         typer.echo(
             "ruleout: this is a fault of the program, not of your files. Please report it with "

@@ -74,9 +74,10 @@ def run_judge(
     check_out(out)
     from ruleout.pipeline import Settings, judge
     from ruleout.report import write_report
+    from ruleout.store import locked
 
     settings = Settings(seed=seed, effort=effort, alpha=alpha, workers=workers or cores())
-    with shown_progress(as_json=as_json) as progress:
+    with locked(out), shown_progress(as_json=as_json) as progress:
         judgement = judge(case, settings, out=out, progress=progress)
         if effort == THOROUGH:
             judgement = _with_chances(case, judgement, settings, out, progress)

@@ -50,6 +50,10 @@ class PlainLines:
         note = self._notes.pop(step, "")
         print(_finished(step, took, note), file=self._stream, flush=True)
 
+    def say(self, message: str) -> None:
+        """Write the message."""
+        print(message, file=self._stream, flush=True)
+
 
 class JsonLines:
     """Every event as one JSON object on a line."""
@@ -74,6 +78,10 @@ class JsonLines:
     def finish(self, step: str) -> None:
         """Write that ``step`` is over."""
         self._write("finish", step=step)
+
+    def say(self, message: str) -> None:
+        """Write the message as an event."""
+        self._write("note", message=message)
 
 
 class LiveBars:
@@ -128,6 +136,10 @@ class LiveBars:
         line = _finished(step, found.elapsed or 0.0, found.fields["note"])
         self._bars.remove_task(task)
         self._bars.console.print(line, style="dim", markup=False, highlight=False)
+
+    def say(self, message: str) -> None:
+        """Write the message above the bars."""
+        self._bars.console.print(message, markup=False, highlight=False)
 
 
 def _finished(step: str, seconds: float, note: str) -> str:

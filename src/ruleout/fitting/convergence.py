@@ -147,7 +147,15 @@ def save_fit(path: Path, groups: Mapping[str, Mapping[str, Array]]) -> None:
     groups : mapping
         ``posterior`` and ``log_likelihood`` with (chain, draw, ...) arrays,
         ``posterior_predictive`` likewise, ``observed_data``.
+
+    Raises
+    ------
+    OSError
+        If there is no room for the file.
     """
+    # HDF5 takes the process down when the disk fills up under it: find out beforehand.
+    sizes = [array.nbytes for group in groups.values() for array in group.values()]
+    path.write_bytes(bytes(sum(sizes) + 4096 * len(sizes) + 65536))
     data = _inference_data(groups)
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")

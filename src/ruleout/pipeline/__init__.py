@@ -54,10 +54,13 @@ def judge(
         If the case cannot be judged as it stands or ``out`` cannot be used.
     """
     settings = settings or Settings()
+    tell = progress or Silent()
     with locked(out):
+        store = Store(out)
         with nullcontext(executor) if executor else local_workers(settings.workers) as runner:
-            flow = Flow(case, settings, Store(out), runner, progress or Silent())
+            flow = Flow(case, settings, store, runner, tell)
             results = _run(judge_variants(flow))
+        store.tell_redone(tell)
         judgement = assemble(case, settings, results)
         save_judgement(judgement, case, out)
         save_fits(case, results, out)

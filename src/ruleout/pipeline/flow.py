@@ -14,7 +14,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from ruleout import __version__
 from ruleout.case import Case
 from ruleout.checks import Column, Tally, maximum, standardise, standardised, tally
 from ruleout.fitting.convergence import Convergence, diagnose
@@ -23,7 +22,7 @@ from ruleout.pipeline.settings import BATCH, ENSEMBLES, Settings
 from ruleout.pipeline.tasks import Arrays, Workbench
 from ruleout.progress import Progress
 from ruleout.seeds import generator
-from ruleout.store import Store, digest
+from ruleout.store import Store, digest, software
 from ruleout.variants import alternatives
 
 Array = NDArray[np.float64]
@@ -125,7 +124,7 @@ class Flow:
         self.executor = executor
         self.progress = progress
         self.bench: Workbench = tasks.bench_of(case)
-        self.whole = digest(__version__, sorted(case.hashes.items()), settings.seed)
+        self.whole = digest(software(), sorted(case.hashes.items()), settings.seed)
         self._data = digest(
             case.hashes.get("data.csv", ""),
             case.experiments.readouts,
@@ -153,7 +152,7 @@ class Flow:
         """Return the digest of all that a variant's fit depends on."""
         posterior = self.bench.posterior(name)
         return digest(
-            __version__,
+            software(),
             self._data,
             posterior.model.rhs,
             sorted((k, v.rest, v.value) for k, v in posterior.model.starts.items()),

@@ -150,6 +150,7 @@ def rehearse(
                 future.cancel()
         for truth in chosen:
             tell.finish(_step(truth))
+        store.tell_redone(tell)
     counts = _tables(variants, found, chosen, data_sets, results)
     meta = _meta(case, settings, found, data_sets, variation, run)
     return Rehearsal(**counts, meta=meta)

@@ -77,6 +77,8 @@ def survey(
         counts.take(rows, block)
         tell.advance(STEP, len(rows), note=_note(source, roster.pick(rows), block))
     tell.finish(STEP)
+    if store:
+        store.tell_redone(tell)
     meta = {
         "version": __version__,
         "title": source.family.title,
