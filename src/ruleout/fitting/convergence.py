@@ -132,11 +132,10 @@ def _inference_data(groups: Mapping[str, Mapping[str, Array]]) -> Any:
         groups = {**groups, "posterior": {"draw_index": np.zeros(shape)}}
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
-        if hasattr(arviz, "InferenceData"):
-            data = arviz.from_dict(**groups)
-        else:
-            data = arviz.from_dict(groups)
-    return data
+        # Names of the old interface still answer in the new one: only the version tells.
+        if int(arviz_version().split(".")[0]) < 1:
+            return arviz.from_dict(**groups)
+        return arviz.from_dict(groups)
 
 
 def save_fit(path: Path, groups: Mapping[str, Mapping[str, Array]]) -> None:
