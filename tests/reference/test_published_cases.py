@@ -24,9 +24,9 @@ WIDTH_90 = 2 * 1.6448536269514722
 ERRORS = 4.0
 
 
-def judged(name: str, folder: Path, alpha: float = 0.05) -> Judgement:
+def judged(name: str, folder: Path, alpha: float = 0.05, effort: str = "quick") -> Judgement:
     case = read_case(CASES / name)
-    return judge(case, Settings(seed=1, effort="quick", alpha=alpha), out=folder)
+    return judge(case, Settings(seed=1, effort=effort, alpha=alpha), out=folder)
 
 
 def claim(judgement: Judgement, name: str) -> str:
@@ -152,12 +152,10 @@ def test_lynx_and_hare_depend_on_each_other(tmp_path: Path) -> None:
     So either both couplings are needed and crowding is not, or nothing fits and the coupled
     structures rank first.
     """
-    found = judged("lynx_hare", tmp_path)
-    coupled = found.variants["choices"].map(
-        lambda text: (
-            {"predation=converts/linear", "lynx_growth=converts/on_hare"}
-            <= {part.replace("=present", "=converts/linear") for part in text.split(";")}
-        )
+    found = judged("lynx_hare", tmp_path, effort="standard")
+    choices = found.variants["choices"].str.split(";").map(set)
+    coupled = choices.map(
+        lambda made: {"predation=converts", "lynx_growth=converts/on_hare"} <= made
     )
     uncoupled = found.variants[~coupled]
     assert (uncoupled["verdict"] == "ruled_out").all()
@@ -209,7 +207,7 @@ def test_ultrasound_spreads(tmp_path: Path) -> None:
     """NIST StRD Chwirut2: residual squares 1011.3 without spreading, 513.05 with it."""
     found = judged("chwirut2", tmp_path)
     assert claim(found, "spreading") == "needed"
-    full = str(variant(found, spreading="converts/linear")["variant"])
+    full = str(variant(found, spreading="converts")["variant"])
     assert_best_fit(found, "absorption.rate", full, 1.6657666537e-1, 3.8303286810e-2)
 
 
