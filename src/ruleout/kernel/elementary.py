@@ -31,7 +31,9 @@ _LOG_TERMS: Final = 9
 _EXP_TERMS: Final = 14
 
 
-FUNCTIONS: Final = ("exp", "log", "log_positive", "sin", "cos", "tanh")
+_FUNCTIONS: Final = ("exp", "log", "log_positive", "sin", "cos", "tanh")
+SYMBOLS: Final = tuple(f"lanes_{name}" for name in _FUNCTIONS)
+"""Names of the emitted functions; LLVM takes plain ``exp`` for the C library's."""
 
 
 class Elementary:
@@ -40,7 +42,7 @@ class Elementary:
     Parameters
     ----------
     assembly : Assembly
-    addresses : mapping of name to int, optional
+    addresses : mapping of symbol to int, optional
         Where the functions are, if another module has them; else this one must :meth:`write_all`.
 
     Attributes
@@ -55,20 +57,20 @@ class Elementary:
         self._addresses = addresses
 
     def call(self, name: str, x: Value) -> Value:
-        """Return function ``name``, one of :data:`FUNCTIONS`, of a value."""
+        """Return function ``name`` (exp, log, log_positive, sin, cos, tanh) of a value."""
         if self.inline:
             return self._body(name, x)
         kind = self._assembly.doubles
-        callee = f"@{name}"
+        callee = f"@lanes_{name}"
         if self._addresses:
-            callee = f"inttoptr (i64 {self._addresses[name]} to ptr)"
+            callee = f"inttoptr (i64 {self._addresses[f'lanes_{name}']} to ptr)"
         return self._assembly.emit(f"call {kind} {callee}({kind} {x})")
 
     def write_all(self) -> None:
         """Write all functions."""
         kind = self._assembly.doubles
-        for name in FUNCTIONS:
-            with self._assembly.function(f"export_{name}", [f"{kind} %x"], kind):
+        for name, symbol in zip(_FUNCTIONS, SYMBOLS, strict=True):
+            with self._assembly.function(f"export_{symbol}", [f"{kind} %x"], kind):
                 self._assembly.give(kind, self._body(name, "%x"))
 
     def _body(self, name: str, x: Value) -> Value:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Sequence
 from functools import lru_cache
 from typing import Any
@@ -9,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from ruleout.kernel.assembly import Assembly
-from ruleout.kernel.elementary import FUNCTIONS, Elementary
+from ruleout.kernel.elementary import SYMBOLS, Elementary
 from ruleout.kernel.emission import Emission
 from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.schedule import Integers
@@ -68,7 +69,7 @@ class SystemCode:
         self.width = width or host_width()
         self._shared = _shared_code(self.width)
         known = self._shared.addresses.tolist()
-        elementary = dict(zip(FUNCTIONS, known[len(STEP_FUNCTIONS) :], strict=True))
+        elementary = dict(zip(SYMBOLS, known[len(STEP_FUNCTIONS) :], strict=True))
         assembly = Assembly(self.width)
         emission = Emission(assembly, Elementary(assembly, elementary), lowered, totals, pivots)
         emission.write()
@@ -87,7 +88,7 @@ def _shared_code(width: int) -> MachineCode:
     """Return the code that all systems share: steps, then elementary functions."""
     assembly = Assembly(width)
     Steps(assembly).write()
-    return MachineCode(assembly.text(), (*STEP_FUNCTIONS, *FUNCTIONS), effort=2)
+    return MachineCode(assembly.text(), (*STEP_FUNCTIONS, *SYMBOLS), effort=2)
 
 
 def host_width() -> int:
@@ -109,7 +110,9 @@ def _machine() -> Any:
 
     llvm.initialize_native_target()
     llvm.initialize_native_asmprinter()
-    target = llvm.Target.from_default_triple()
+    triple = llvm.get_process_triple()
+    # The loader of machine code knows ELF on every system, but not Windows' own format.
+    target = llvm.Target.from_triple(f"{triple}-elf" if sys.platform == "win32" else triple)
     features = llvm.get_host_cpu_features()
     # LLVM would halve 512-bit vectors on some hosts, to spare others on the same chip.
     features["prefer-256-bit"] = False
