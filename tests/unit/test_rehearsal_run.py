@@ -114,6 +114,14 @@ def test_tables_count_what_was_judged(decay: Case, tmp_path: Path) -> None:
     assert pd.read_csv(tmp_path / "power.csv")["rival"].tolist() == ["v1", "v2"]
 
 
+@pytest.mark.parametrize(("alpha", "replicates"), [(0.05, 39), (0.1, 39), (0.01, 199), (0.03, 66)])
+def test_replicates_are_enough_to_reject_at_alpha(alpha: float, replicates: int) -> None:
+    """Two of B + 1 may be as extreme: the size is alpha, or as close below as two allow."""
+    spent = Spending(alpha=alpha, effort="quick").spent
+    assert spent.most_replicates == replicates
+    assert 2 / (replicates + 1) <= alpha
+
+
 def test_unknown_truths_and_no_data_sets_are_refused(decay: Case, tmp_path: Path) -> None:
     with pytest.raises(InputError, match="no variant"):
         rehearse(decay, out=tmp_path, truths=["v9"], data_sets=1)

@@ -5,7 +5,8 @@ from __future__ import annotations
 import asyncio
 from collections.abc import Callable, Mapping
 from concurrent.futures import Executor, Future
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import ceil
 from pathlib import Path
 from types import MappingProxyType
 from typing import Any, Final
@@ -45,7 +46,12 @@ EFFORTS: Final[Mapping[str, Effort]] = MappingProxyType(
     }
 )
 """Work per simulated data set. With 39 replicates, too, a Monte Carlo test at 5 % has exactly that
-size; few replicates cost a little power, as p-values near alpha are decided by chance."""
+size; few replicates cost a little power, as p-values near alpha are decided by chance.
+
+References
+----------
+.. [1] A. C. A. Hope, J. R. Stat. Soc. B 30 (1968) 582, doi:10.1111/j.2517-6161.1968.tb00759.x.
+"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,8 +60,10 @@ class Spending(Settings):
 
     @property
     def spent(self) -> Effort:
-        """The effort's numbers."""
-        return EFFORTS[self.effort]
+        """The effort's numbers, with replicates enough to reject at alpha at all."""
+        effort = EFFORTS[self.effort]
+        replicates = max(effort.most_replicates, ceil(2 / self.alpha) - 1)
+        return replace(effort, least_replicates=replicates, most_replicates=replicates)
 
 
 class _Inline(Executor):
