@@ -35,7 +35,8 @@ def judged(monkeypatch: pytest.MonkeyPatch, frost_judgement: Judgement) -> list[
     """Put the prepared judgement in place of the computation; return what it was asked for."""
     asked: list[dict[str, Any]] = []
 
-    def judge(case: Any, settings: Any, *, out: Path, progress: Any) -> Judgement:
+    def judge(case: Any, settings: Any, *, out: Path, progress: Any, executor: Any) -> Judgement:
+        assert executor is None
         asked.append({"case": case, "settings": settings, "out": out})
         progress.start("v1", 2)
         progress.advance("v1", note="searched")

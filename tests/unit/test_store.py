@@ -7,6 +7,7 @@ import shutil
 import subprocess
 import sys
 import threading
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -19,7 +20,7 @@ from ruleout.pipeline import Settings, judge
 from ruleout.progress import Silent
 from ruleout.store import ASIDE, Store, locked, write_aside
 
-CASE = Path(__file__).parents[1] / "reference" / "cases" / "conjugate_decay_inflow"
+ReadFiles = Callable[[Path], dict[str, bytes]]
 ARRAYS = {
     "chain": np.linspace(0.0, 1.0, 30).reshape(5, 3, 2),
     "count": np.array(7),
@@ -27,15 +28,6 @@ ARRAYS = {
     "none": np.zeros((4, 0)),
 }
 TABLES = ("variants.csv", "claims.csv", "checks.csv", "verdict.json")
-
-
-def files(folder: Path) -> dict[str, bytes]:
-    """Every finished file of a run but the figures, which name the moment they were drawn."""
-    return {
-        str(path.relative_to(folder)): path.read_bytes()
-        for path in sorted(folder.rglob("*"))
-        if path.is_file() and path.name != ".lock" and path.parent.name not in ("figures", "fits")
-    }
 
 
 def same(found: Any, expected: dict[str, np.ndarray[Any, Any]]) -> bool:
@@ -243,9 +235,9 @@ SETTINGS = Settings(seed=3, effort="quick")
 
 
 @pytest.fixture(scope="module")
-def finished(tmp_path_factory: pytest.TempPathFactory) -> Path:
+def finished(tiny_case: Path, tmp_path_factory: pytest.TempPathFactory) -> Path:
     folder = tmp_path_factory.mktemp("stored")
-    shutil.copytree(CASE, folder / "case")
+    shutil.copytree(tiny_case, folder / "case")
     judge(read_case(folder / "case"), SETTINGS, out=folder / "run")
     return folder
 
@@ -268,15 +260,19 @@ def rerun(folder: Path, settings: Settings = SETTINGS) -> tuple[list[str], set[s
 
 
 @together
-def test_an_unchanged_run_computes_nothing_and_is_the_same(again: Path) -> None:
-    before = files(again / "run")
+def test_an_unchanged_run_computes_nothing_and_is_the_same(
+    again: Path, finished_files: ReadFiles
+) -> None:
+    before = finished_files(again / "run")
     assert rerun(again) == ([], set())
-    assert files(again / "run") == before
+    assert finished_files(again / "run") == before
 
 
 @together
-def test_lost_and_damaged_pieces_are_made_again_the_same(again: Path) -> None:
-    before = files(again / "run")
+def test_lost_and_damaged_pieces_are_made_again_the_same(
+    again: Path, finished_files: ReadFiles
+) -> None:
+    before = finished_files(again / "run")
     stages = again / "run" / "stages"
     (stages / "v1" / "search.npz").unlink()
     chain = stages / "v2" / "chain-1-001.npz"
@@ -289,7 +285,7 @@ def test_lost_and_damaged_pieces_are_made_again_the_same(again: Path) -> None:
     said, written = rerun(again)
     assert written == {"v1/search", "v2/chain-1-001", "v2/observed"}
     assert said == ["Made again because damaged: 2 of v2."]
-    assert files(again / "run") == before
+    assert finished_files(again / "run") == before
 
 
 @together

@@ -2,7 +2,12 @@
 
 from __future__ import annotations
 
+import os
+import sys
 from collections.abc import Sequence
+
+INTERRUPTED = 130
+"""Exit status after Ctrl-C, as shells give it."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -24,5 +29,12 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         app(args=None if arguments is None else list(arguments), prog_name="ruleout")
     except SystemExit as stop:
-        return stop.code if isinstance(stop.code, int) else int(stop.code is not None)
-    return 0
+        status = stop.code if isinstance(stop.code, int) else int(stop.code is not None)
+    else:
+        status = 0
+    if arguments is None and status == INTERRUPTED:
+        # A thread that is computing cannot be stopped, and would be waited for.
+        sys.stdout.flush()
+        sys.stderr.flush()
+        os._exit(status)
+    return status

@@ -81,6 +81,14 @@ def judge(
         int | None,
         typer.Option(min=1, help="Processes to use.", show_default="all cores"),
     ] = None,
+    scheduler: Annotated[
+        str | None,
+        typer.Option(
+            metavar="ADDRESS",
+            help="Compute on the Dask cluster with this scheduler, such as tcp://host:8786.",
+            show_default=False,
+        ),
+    ] = None,
     effort: Annotated[Effort, typer.Option(help="How much computing to spend.")] = Effort.standard,
     alpha: Annotated[
         float, typer.Option(help="Chance of ruling out a true variant that is accepted.")
@@ -101,6 +109,7 @@ def judge(
             effort=effort.value,
             alpha=alpha,
             as_json=log is Log.json,
+            scheduler=scheduler,
         )
         raise typer.Exit(status)
 

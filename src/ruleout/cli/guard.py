@@ -9,9 +9,8 @@ from contextlib import contextmanager
 
 import typer
 
+from ruleout.cli import INTERRUPTED
 from ruleout.errors import RuleoutError, lacks_room
-
-INTERRUPTED = 130
 
 
 @contextmanager

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import os
 import sys
+from contextlib import nullcontext
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -59,6 +60,7 @@ def run_judge(
     effort: str,
     alpha: float,
     as_json: bool,
+    scheduler: str | None = None,
 ) -> int:
     """Judge the case in ``folder``, write everything into ``out`` and print the table.
 
@@ -72,13 +74,17 @@ def run_judge(
 
     case = read_case(folder)
     check_out(out)
-    from ruleout.pipeline import Settings, judge
+    from ruleout.pipeline import Settings, cluster_workers, judge
     from ruleout.report import write_report
     from ruleout.store import locked
 
     settings = Settings(seed=seed, effort=effort, alpha=alpha, workers=workers or cores())
-    with locked(out), shown_progress(as_json=as_json) as progress:
-        judgement = judge(case, settings, out=out, progress=progress)
+    with (
+        locked(out),
+        shown_progress(as_json=as_json) as progress,
+        cluster_workers(scheduler) if scheduler else nullcontext() as executor,
+    ):
+        judgement = judge(case, settings, out=out, progress=progress, executor=executor)
         if effort == THOROUGH:
             judgement = _with_chances(case, judgement, settings, out, progress)
         write_report(judgement, case, out, progress=progress)

@@ -14,12 +14,12 @@ from ruleout.pipeline.assemble import assemble, save_fits
 from ruleout.pipeline.flow import Flow
 from ruleout.pipeline.settings import EFFORTS, Effort, Settings
 from ruleout.pipeline.variants import Results, judge_variants
-from ruleout.pipeline.workers import local_workers
+from ruleout.pipeline.workers import cluster_workers, local_workers
 from ruleout.progress import Progress, Silent
 from ruleout.store import Store, locked, save_judgement
 from ruleout.verdicts import Judgement
 
-__all__ = ["EFFORTS", "Effort", "Settings", "judge"]
+__all__ = ["EFFORTS", "Effort", "Settings", "cluster_workers", "judge"]
 
 
 def judge(

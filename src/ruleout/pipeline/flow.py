@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import asyncio
 from collections.abc import Callable
-from concurrent.futures import Executor
+from concurrent.futures import BrokenExecutor, Executor
 from dataclasses import dataclass
 from typing import Any
 
@@ -134,9 +134,14 @@ class Flow:
     async def run(self, function: Callable[..., Arrays], *arguments: Any) -> Arrays:
         """Run a task in the executor without storing its result."""
         loop = asyncio.get_running_loop()
-        return await loop.run_in_executor(
-            self.executor, tasks.run_task, function, self.case, *arguments
-        )
+        try:
+            return await loop.run_in_executor(
+                self.executor, tasks.run_task, function, self.case, *arguments
+            )
+        except BrokenExecutor:
+            # Python 3.11 prints a traceback if the other tasks are cancelled while they fail too.
+            await asyncio.sleep(0.2)
+            raise
 
     async def piece(
         self, key: str, fingerprint: str, function: Callable[..., Arrays], *arguments: Any

@@ -6,8 +6,10 @@ process needs again and again (models, compiled systems) is kept on its workbenc
 
 from __future__ import annotations
 
+import threading
 import warnings
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from functools import cached_property
 from typing import Any
 
@@ -30,10 +32,11 @@ REACH_DRAWS = 256
 
 
 class Workbench:
-    """Everything derived from a case that tasks share within a process."""
+    """Everything derived from a case that tasks share within a process, in threads as well."""
 
     def __init__(self, case: Case) -> None:
         self.case = case
+        self._making = threading.RLock()
         self._posteriors: dict[str, Posterior] = {}
         self._checkers: dict[str, Checker] = {}
 
@@ -49,38 +52,68 @@ class Workbench:
 
     def posterior(self, name: str) -> Posterior:
         """Return the posterior of the variant called ``name``."""
-        if name not in self._posteriors:
-            mechanism, experiments = self.case.mechanism, self.case.experiments
-            model = build(self.variants.variants[name], mechanism, experiments)
-            self._posteriors[name] = Posterior(model, mechanism, experiments, self.ties)
-        return self._posteriors[name]
+        with self._making:
+            if name not in self._posteriors:
+                mechanism, experiments = self.case.mechanism, self.case.experiments
+                model = build(self.variants.variants[name], mechanism, experiments)
+                self._posteriors[name] = Posterior(model, mechanism, experiments, self.ties)
+            return self._posteriors[name]
 
     def checker(self, name: str) -> Checker:
         """Return the checker of the variant called ``name``."""
-        if name not in self._checkers:
-            neighbours = {
-                choice: [self.posterior(n) for n in names]
-                for choice, names in alternatives(self.variants, name).items()
-            }
-            self._checkers[name] = Checker(self.posterior(name), neighbours)
-        return self._checkers[name]
+        with self._making:
+            if name not in self._checkers:
+                neighbours = {
+                    choice: [self.posterior(n) for n in names]
+                    for choice, names in alternatives(self.variants, name).items()
+                }
+                self._checkers[name] = Checker(self.posterior(name), neighbours)
+            return self._checkers[name]
 
 
 _bench: Workbench | None = None
+_changing = threading.Lock()
 
 
 def bench_of(case: Case) -> Workbench:
     """Return this process's workbench for ``case``, made anew when the case changes."""
     global _bench
-    if _bench is None or _bench.case.hashes != case.hashes:
-        _bench = Workbench(case)
-    return _bench
+    with _changing:
+        if _bench is None or _bench.case.hashes != case.hashes:
+            _bench = Workbench(case)
+        return _bench
+
+
+_quiet_tasks = 0
+_silence = warnings.catch_warnings()
+
+
+@contextmanager
+def _without_warnings() -> Iterator[None]:
+    """Silence warnings until the last of the tasks that run side by side is done.
+
+    On leaving, a silence of each task's own would bring back what it found, which in threads may
+    be the silence of another one.
+    """
+    global _quiet_tasks, _silence
+    with _changing:
+        if _quiet_tasks == 0:
+            _silence = warnings.catch_warnings()
+            _silence.__enter__()
+            warnings.simplefilter("ignore")
+        _quiet_tasks += 1
+    try:
+        yield
+    finally:
+        with _changing:
+            _quiet_tasks -= 1
+            if _quiet_tasks == 0:
+                _silence.__exit__(None, None, None)
 
 
 def run_task(function: Callable[..., Arrays], case: Case, *arguments: Any) -> Arrays:
     """Run one piece of work in this process, without warnings from wide-prior arithmetic."""
-    with warnings.catch_warnings(), np.errstate(all="ignore"):
-        warnings.simplefilter("ignore")
+    with _without_warnings(), np.errstate(all="ignore"):
         return function(bench_of(case), *arguments)
 
 
