@@ -13,7 +13,7 @@ ALPHA = 0.05
 
 
 def test_stopping_bounds_keep_the_resampling_risk():
-    """A p-value exactly at alpha is decided wrongly either way in at most one path in a thousand."""
+    """A p-value exactly at alpha is decided wrongly, either way, once in a thousand paths."""
     rng = np.random.default_rng(7)
     lower, upper = boundaries(ALPHA, 2000)
     paths = np.cumsum(rng.random((4000, 2000)) < ALPHA, axis=1)
