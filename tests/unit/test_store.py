@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 import shutil
 import subprocess
@@ -15,6 +16,7 @@ import numpy as np
 import pytest
 
 from ruleout.case import read_case
+from ruleout.cli.progress import JsonLines, PlainLines
 from ruleout.errors import InputError, RuleoutError, lacks_room
 from ruleout.pipeline import Settings, judge
 from ruleout.progress import Silent
@@ -341,3 +343,18 @@ def test_a_folder_that_cannot_be_made_is_bad_input(tmp_path: Path) -> None:
     with pytest.raises(InputError, match="cannot write there"), locked(tmp_path / "file" / "run"):
         pass
     assert issubclass(InputError, RuleoutError)
+
+
+def test_what_is_made_again_is_told_as_a_line_and_as_an_event(tmp_path: Path) -> None:
+    store = Store(tmp_path)
+    store.outdated += ["v1/search", "v1/polish", "inspection"]
+    plain, events = io.StringIO(), io.StringIO()
+    store.tell_redone(PlainLines(plain))
+    store.tell_redone(JsonLines(events))
+    expected = (
+        "Made again because out of date (an input, a setting or a version has changed): "
+        "2 of v1, inspection."
+    )
+    assert plain.getvalue() == f"{expected}\n"
+    event = json.loads(events.getvalue())
+    assert (event["event"], event["message"]) == ("note", expected)
