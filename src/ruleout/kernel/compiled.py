@@ -20,7 +20,6 @@ from ruleout.kernel.steps import Setting
 from ruleout.kernel.types import Array, Protocol, Status
 
 Flags = NDArray[np.int8]
-_STIFF_STEPS = 6.0
 _ROWS_PER_TASK = 512
 _PATIENCE = 1000.0
 """Steps at rtol 1e-6 in which the implicit method must have made progress."""
@@ -29,18 +28,11 @@ _PATIENCE = 1000.0
 class CompiledBackend:
     """Solves and steady states of one lowered system, by machine code."""
 
-    def __init__(
-        self,
-        lowered: Lowered,
-        totals: Array,
-        pivots: tuple[int, ...],
-        *,
-        width: int | None = None,
-    ) -> None:
+    def __init__(self, lowered: Lowered, totals: Array, pivots: tuple[int, ...]) -> None:
         self._n, self._p = len(lowered.states), len(lowered.parameters)
         self._outputs = self._n - lowered.forced
         self._lowered = lowered
-        self._code = SystemCode(lowered, totals, pivots, width)
+        self._code = SystemCode(lowered, totals, pivots)
         self._spare: dict[int, list[Lanes]] = {}
 
     @cached_property
@@ -65,7 +57,7 @@ class CompiledBackend:
         max_steps: int,
     ) -> tuple[Array, Flags, NDArray[np.int32]]:
         """Return states (B, M, N), status and steps; see :meth:`Program.solve`."""
-        from ruleout.kernel.driver import EXPLICIT, IMPLICIT, integrate
+        from ruleout.kernel.driver import EXPLICIT, IMPLICIT, STIFF_STEPS, integrate
 
         plan = schedule.plan
         # The driver reads it behind its address, so it must not be a strided view.
@@ -80,7 +72,7 @@ class CompiledBackend:
 
         def run(groups: Integers) -> None:
             lanes = self._borrow(vectors)
-            lanes.tolerance[: len(Setting)] = rtol, _STIFF_STEPS, 0.0, 0.0
+            lanes.tolerance[: len(Setting)] = rtol, STIFF_STEPS, 0.0, 0.0
             lanes.tolerance[len(Setting) :] = atol
             stiff = np.empty(len(groups), dtype=np.int64)
             directory = lanes.directory(schedule, rows, group)

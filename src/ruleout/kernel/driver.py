@@ -51,7 +51,7 @@ _HAND_OVER = -2
 EXPLICIT, IMPLICIT, SETTLE = 0, 1, 2
 """Modes: Tsit5 until stiff, Rodas5P, and Rodas5P without end until the state is steady."""
 
-_STIFF_STEPS = 6.0
+STIFF_STEPS = 6.0
 _EXPLICIT_BUDGET = 400.0
 _EXPLICIT_PATIENCE = 8000.0
 _BLOW_UP_RATIO = 1e8
@@ -255,7 +255,7 @@ def _verdict(at: int, mode: int, slot: int, g: int, most: float, patience: float
         return RUNNING
     if steps >= most:
         return Status.TOO_MANY_STEPS
-    if mode == EXPLICIT and stiff >= _STIFF_STEPS:
+    if mode == EXPLICIT and stiff >= STIFF_STEPS:
         return _HAND_OVER
     if steps < _control(at, lead, Control.STEP_LIMIT):
         return RUNNING

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ruleout.expressions import ONE, ZERO, Expr, differentiate, sym, symbols
+from ruleout.expressions import ONE, ZERO, Expr, differentiate, symbols
 from ruleout.kernel.types import System
 
 TIME = "time"
@@ -47,8 +47,3 @@ def lower(system: System) -> Lowered:
     columns = [differentiate(rhs, name) if name in used else (ZERO,) * len(rhs) for name in states]
     jacobian = tuple(tuple(column[i] for column in columns) for i in range(len(rhs)))
     return Lowered(states, system.parameters, rhs, jacobian, forced)
-
-
-def state_symbols(lowered: Lowered) -> tuple[Expr, ...]:
-    """Return the symbols of the states, in order."""
-    return tuple(sym(name) for name in lowered.states)
