@@ -49,7 +49,7 @@ def digest(*parts: object) -> str:
 def software() -> tuple[str, ...]:
     """Return the versions that the numbers depend on: ours and those of the libraries."""
     libraries = ("numpy", "scipy", "emcee", "numba", "llvmlite", "arviz", "networkx")
-    return (__version__, *(f"{name} {version(name)}" for name in libraries))
+    return (f"ruleout {__version__}", *(f"{name} {version(name)}" for name in libraries))
 
 
 def write_aside(path: Path, write: Callable[[Path], None]) -> None:

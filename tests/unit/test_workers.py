@@ -17,8 +17,9 @@ from ruleout.case import read_case
 from ruleout.errors import InputError, RuleoutError
 from ruleout.pipeline import Settings, judge
 from ruleout.pipeline.tasks import run_task
-from ruleout.pipeline.workers import cluster_workers, local_workers
+from ruleout.pipeline.workers import _prepare_cluster, local_workers
 from ruleout.progress import Silent
+from ruleout.store import software
 
 ReadFiles = Callable[[Path], dict[str, bytes]]
 # One process computes the reference and compares the others with it.
@@ -140,7 +141,22 @@ def test_leaving_gives_up_what_is_under_way() -> None:
     stop.set()
 
 
-def test_no_scheduler_at_an_address_is_bad_input() -> None:
-    pytest.importorskip("distributed", reason="Dask is not installed")
-    with pytest.raises(InputError, match="no scheduler answers"), cluster_workers("127.0.0.1:9"):
+class _Client:
+    """Stands for a cluster whose workers answer with ``versions``."""
+
+    def __init__(self, *versions: tuple[str, ...]) -> None:
+        self.versions = versions
+
+    def run(self, _: Any) -> dict[str, tuple[str, ...]]:
+        return {f"tcp://node{i}": v for i, v in enumerate(self.versions)}
+
+    def register_plugin(self, _: Any) -> None:
         pass
+
+
+def test_a_cluster_with_other_versions_is_refused() -> None:
+    pytest.importorskip("distributed", reason="Dask is not installed")
+    _prepare_cluster(_Client(software(), software()))
+    other = (software()[0], "numpy 1.0", *software()[2:])
+    with pytest.raises(InputError, match=r"node1 has numpy 1.0 where this machine has numpy"):
+        _prepare_cluster(_Client(software(), other))

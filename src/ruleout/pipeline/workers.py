@@ -10,9 +10,11 @@ from collections.abc import Iterator
 from concurrent.futures import BrokenExecutor, Executor, ProcessPoolExecutor, ThreadPoolExecutor
 from contextlib import contextmanager
 from multiprocessing import get_context
+from typing import Any
 
 from ruleout.errors import InputError, RuleoutError
 from ruleout.kernel import set_threads
+from ruleout.store import software
 
 
 @contextmanager
@@ -53,7 +55,8 @@ def cluster_workers(address: str) -> Iterator[Executor]:
     Raises
     ------
     InputError
-        If Dask is not installed or nothing answers.
+        If Dask is not installed, nothing answers, or a worker has other versions of what the
+        numbers depend on.
     """
     try:
         from distributed import Client, KilledWorker
@@ -72,6 +75,7 @@ def cluster_workers(address: str) -> Iterator[Executor]:
         ) from error
     try:
         with client:
+            _prepare_cluster(client)
             executor = client.get_executor(pure=False, retries=3)
             try:
                 yield executor
@@ -82,6 +86,36 @@ def cluster_workers(address: str) -> Iterator[Executor]:
             f"the cluster gave up on a task ({error}); what is finished is kept. Run the same "
             "command again to go on"
         ) from error
+
+
+def _prepare_cluster(client: Any) -> None:
+    """Leave a worker's other cores to the other workers, and hold their versions against ours."""
+    from distributed import WorkerPlugin
+
+    class OneThread(WorkerPlugin):  # type: ignore[misc]
+        name = "ruleout: one thread a task"
+
+        def setup(self, worker: Any) -> None:  # noqa: ARG002
+            set_threads(1)
+
+    ours = set(software())
+    try:
+        found = client.run(software)
+        client.register_plugin(OneThread())
+    except ImportError as error:
+        raise InputError(
+            f"a worker of this cluster cannot import this program ({error}); install the same "
+            "version on every machine of the cluster",
+            where="--scheduler",
+        ) from error
+    for worker, versions in found.items():
+        if set(versions) != ours:
+            raise InputError(
+                f"worker {worker} has {', '.join(sorted(set(versions) - ours))} where this "
+                f"machine has {', '.join(sorted(ours - set(versions)))}; install the same "
+                "versions on every machine of the cluster",
+                where="--scheduler",
+            )
 
 
 @contextmanager
