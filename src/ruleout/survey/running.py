@@ -16,7 +16,7 @@ from ruleout import __version__
 from ruleout.errors import InputError, RuleoutError
 from ruleout.progress import Progress, Silent
 from ruleout.seeds import generator
-from ruleout.store import Store, digest
+from ruleout.store import Store, digest, software
 from ruleout.survey.enumeration import enumerate_family
 from ruleout.survey.mechanisms import AnyFamily, MechanismFamily, VariantRoster
 from ruleout.survey.reading import FamilyFile
@@ -129,7 +129,7 @@ def _blocks(
         rows = order[first : first + size]
         key = f"block-{labels[rows[0]].replace('|', '_')}-{len(rows)}"
         fingerprint = digest(
-            __version__, source.family, source.behaviours, settings.sets, settings.method,
+            software(), source.family, source.behaviours, settings.sets, settings.method,
             settings.seed, [labels[t] for t in rows],
         )  # fmt: skip
         found = store.get(key, fingerprint) if store else None
