@@ -24,6 +24,8 @@ from ruleout.fitting.search import Search
 Array = NDArray[np.float64]
 OVERDISPERSION = 1.5
 """Ratio of the spread of starting walkers to that of the local normal approximation."""
+FAILURES_KEPT = 40
+"""Failed evaluations of a block whose place is remembered."""
 
 
 def walkers_for(dimension: int) -> int:
@@ -66,6 +68,8 @@ class Block:
         To go on from.
     solved, failed : int
         Evaluations inside the priors, and those whose integration failed.
+    failed_at : (F, D) array
+        Where the first of those were, at most ``FAILURES_KEPT``.
     """
 
     chain: Array
@@ -73,6 +77,7 @@ class Block:
     walkers: Walkers
     solved: int
     failed: int
+    failed_at: Array
 
 
 class _DifferentialEvolution(emcee.moves.DEMove):  # type: ignore[misc]
@@ -108,11 +113,14 @@ class _Density:
         self.posterior = posterior
         self.solved = 0
         self.failed = 0
+        self.failed_at = np.zeros((0, posterior.space.dimension))
 
     def __call__(self, q: Array) -> Array:
         value, failed = self.posterior.log_density(q)
         self.solved += int(np.isfinite(value).sum() + failed.sum())
         self.failed += int(failed.sum())
+        if failed.any() and len(self.failed_at) < FAILURES_KEPT:
+            self.failed_at = np.concatenate([self.failed_at, q[failed]])[:FAILURES_KEPT]
         return value
 
 
@@ -190,4 +198,11 @@ def run_block(posterior: Posterior, walkers: Walkers, stored: int, thin: int) ->
     state = sampler.run_mcmc(state, stored, thin_by=thin, skip_initial_state_check=True)
     _, key, *tail = state.random_state
     after = Walkers(state.coords, state.log_prob, np.asarray(key), np.array(tail, dtype=float))
-    return Block(sampler.get_chain(), sampler.get_log_prob(), after, density.solved, density.failed)
+    return Block(
+        sampler.get_chain(),
+        sampler.get_log_prob(),
+        after,
+        density.solved,
+        density.failed,
+        density.failed_at,
+    )

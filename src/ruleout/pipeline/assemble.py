@@ -12,6 +12,7 @@ import pandas as pd
 from ruleout.case import Case
 from ruleout.equations import describe
 from ruleout.pipeline import tasks
+from ruleout.pipeline.failures import NOTEWORTHY, failed_solves
 from ruleout.pipeline.settings import Settings
 from ruleout.pipeline.variants import Results, kept
 from ruleout.store import write_aside
@@ -30,7 +31,7 @@ def assemble(case: Case, settings: Settings, results: Results) -> Judgement:
         "claims": [_claim_row(c) for c in results.claims],
         "checks": [row for n in results.order for row in _check_rows(results, n)],
         "replicates": [row for n in results.order for row in _replicate_rows(results, n)],
-        "findings": _finding_rows(results),
+        "findings": _finding_rows(bench, results),
     }
     frames = {name: pd.DataFrame(rows, columns=COLUMNS[name]) for name, rows in tables.items()}
     for name in ("curves", "residuals", "parameters", "quantiles"):
@@ -86,7 +87,7 @@ def _flags(
         flags.append("searches disagree")
     if np.isfinite(fit.objective) and not fit.converged:
         flags.append("chains not converged")
-    if np.isfinite(fit.objective) and fit.failed_share > 0.0005:
+    if np.isfinite(fit.objective) and fit.failed_share > NOTEWORTHY:
         flags.append(f"{100 * fit.failed_share:.2g} % of solves failed")
     if np.isfinite(fit.objective) and space.dimension:
         bound = [n for n, b in zip(space.names, space.on_bound(fit.best, 1e-3), strict=True) if b]
@@ -215,9 +216,10 @@ def _replicate_rows(results: Results, name: str) -> list[dict[str, Any]]:
     ]
 
 
-def _finding_rows(results: Results) -> list[dict[str, Any]]:
+def _finding_rows(bench: tasks.Workbench, results: Results) -> list[dict[str, Any]]:
     before = pd.DataFrame(dict(results.findings)).to_dict("records")
-    return [{str(k): v for k, v in row.items()} for row in before] + [
+    rows = [{str(k): v for k, v in row.items()} for row in before]
+    rows += [
         {
             "variant": larger,
             "kind": "nesting",
@@ -229,6 +231,12 @@ def _finding_rows(results: Results) -> list[dict[str, Any]]:
         }
         for larger, smaller in results.unreachable
     ]
+    for name in results.order:
+        found = failed_solves(bench.posterior(name), results.fits[name])
+        if found is not None:
+            row = (name, "failed solves", *found)
+            rows.append(dict(zip(COLUMNS["findings"], row, strict=True)))
+    return rows
 
 
 def _meta(case: Case, settings: Settings, results: Results) -> dict[str, Any]:

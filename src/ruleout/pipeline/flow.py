@@ -8,7 +8,7 @@ from __future__ import annotations
 import asyncio
 from collections.abc import Callable
 from concurrent.futures import BrokenExecutor, Executor
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -48,6 +48,8 @@ class Fit:
     converged : bool
     failed_share : float
         Of solves inside the priors.
+    failed_at : (F, D) array
+        Where some of them failed.
     """
 
     best: Array
@@ -59,6 +61,7 @@ class Fit:
     diagnostics: Convergence
     converged: bool
     failed_share: float
+    failed_at: Array = field(default_factory=lambda: np.zeros((0, 0)))
 
     @property
     def trusted(self) -> bool:
@@ -248,6 +251,7 @@ class Flow:
             diagnostics,
             converged,
             failed / max(1, solved),
+            np.concatenate([b["failed_at"] for row in history for b in row]),
         )
 
     async def _diagnose(self, chains: Array) -> Convergence:

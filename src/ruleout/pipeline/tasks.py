@@ -159,6 +159,7 @@ def extend_chain(bench: Workbench, name: str, before: Arrays, stored: int, thin:
         "end_tail": block.walkers.tail,
         "solved": np.array(block.solved),
         "failed": np.array(block.failed),
+        "failed_at": block.failed_at,
     }
 
 
