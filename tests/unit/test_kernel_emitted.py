@@ -12,10 +12,11 @@ from numpy.typing import NDArray
 from ruleout.expressions import Expr, apply, const, evaluate, sym
 from ruleout.kernel import System
 from ruleout.kernel.conservation import conserved_totals
+from ruleout.kernel.controls import Control, Setting
 from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import lower
 from ruleout.kernel.memory import Lanes, aligned_zeros
-from ruleout.kernel.steps import STEP_FUNCTIONS, SYSTEM_FUNCTIONS, Control, Setting
+from ruleout.kernel.steps import STEP_FUNCTIONS, SYSTEM_FUNCTIONS
 
 Array = NDArray[np.float64]
 WIDTHS = (1, 2, 4, 8, 16)

@@ -11,12 +11,12 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from ruleout.kernel.controls import Setting
 from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.lowering import Lowered
 from ruleout.kernel.memory import Lanes, Rows
 from ruleout.kernel.reference import Tape
 from ruleout.kernel.schedule import Integers, Schedule, addresses, pack
-from ruleout.kernel.steps import Setting
 from ruleout.kernel.types import Array, Protocol, Status
 
 Flags = NDArray[np.int8]
@@ -109,7 +109,8 @@ class CompiledBackend:
         self, y: Array, p: Array, schedule: Schedule, which: Integers
     ) -> tuple[Array, Flags]:
         """Return the steady states under the last segment of each row's protocol."""
-        from ruleout.kernel.driver import SETTLE, STEADY_FLOOR, STEADY_RTOL, integrate
+        from ruleout.kernel.driver import SETTLE, STEADY_FLOOR, integrate
+        from ruleout.kernel.newton import STEADY_RTOL
 
         last, output = schedule.plan.segment_at[which + 1] - 1, schedule.plan.time_at[which + 1]
         rows = Rows(y.copy(), p, (len(y), 1, self._n), which, last, output, 0.0)

@@ -20,7 +20,10 @@ from typing import Any
 
 import numpy as np
 
+from ruleout.kernel.controls import CONTROLS, Control
+from ruleout.kernel.lanes import control, in_vectors, in_y, is_finite, largest, set_control
 from ruleout.kernel.memory import RUNNING, Place
+from ruleout.kernel.newton import STEADY_RTOL, polish
 from ruleout.kernel.pointers import (
     compiled,
     entry_point,
@@ -33,7 +36,7 @@ from ruleout.kernel.pointers import (
     whole,
     write,
 )
-from ruleout.kernel.steps import STEP_FUNCTIONS, Control
+from ruleout.kernel.steps import STEP_FUNCTIONS
 from ruleout.kernel.types import Status
 
 _START = STEP_FUNCTIONS.index("start")
@@ -41,10 +44,6 @@ _EXPLICIT = STEP_FUNCTIONS.index("explicit")
 _IMPLICIT = STEP_FUNCTIONS.index("implicit")
 _COMMIT_EXPLICIT = STEP_FUNCTIONS.index("commit_explicit")
 _COMMIT_IMPLICIT = STEP_FUNCTIONS.index("commit_implicit")
-_NEWTON = STEP_FUNCTIONS.index("newton")
-
-_CONTROLS = len(Control)
-
 
 _HAND_OVER = -2
 
@@ -56,65 +55,15 @@ _EXPLICIT_BUDGET = 400.0
 _EXPLICIT_PATIENCE = 8000.0
 _BLOW_UP_RATIO = 1e8
 
-STEADY_RTOL = 1e-4
 STEADY_FLOOR = 1e-6
 """States below this part of the largest one count as zero while the flow is followed."""
 _STEADY_STEPS = 3000.0
-_STEADY_FIRST_TRY = 4.0
-_NEWTON_ITERATIONS = 12
-_NEWTON_NEAR = 1e-5
-_NEWTON_SETTLED = 1e-10
-_NEWTON_EXACT = 1e-14
-
-
-@compiled
-def _in_vectors(at: int, lane: int, members: int) -> int:
-    """Return the index of ``lane`` in the first of ``members`` vectors per vector of lanes."""
-    shift = read_int(at, Place.WIDTH_BITS)
-    width = 1 << shift
-    return ((lane >> shift) * members << shift) + (lane & (width - 1))
-
-
-@compiled
-def _control(at: int, lane: int, entry: int) -> float:
-    first = _in_vectors(at, lane, _CONTROLS)
-    return number(at, Place.CONTROL, first + (entry << read_int(at, Place.WIDTH_BITS)))
-
-
-@compiled
-def _set_control(at: int, lane: int, entry: int, value: float) -> None:
-    first = _in_vectors(at, lane, _CONTROLS)
-    set_number(at, Place.CONTROL, first + (entry << read_int(at, Place.WIDTH_BITS)), value)
-
-
-@compiled
-def _in_y(at: int, lane: int) -> int:
-    """Return the address of the first state in ``lane``; the next are ``width`` apart."""
-    return read_int(at, Place.Y) + 8 * _in_vectors(at, lane, 2 * read_int(at, Place.N))
-
-
-@compiled
-def _is_finite(at: int, lane: int, count: int) -> bool:
-    y, width = _in_y(at, lane), read_int(at, Place.WIDTH)
-    total = 0.0
-    for i in range(count):
-        total += read(y, i * width) * 0.0
-    return total == 0.0
-
-
-@compiled
-def _largest(at: int, lane: int) -> float:
-    y, width = _in_y(at, lane), read_int(at, Place.WIDTH)
-    size = 0.0
-    for i in range(read_int(at, Place.N)):
-        size = max(size, abs(read(y, i * width)))
-    return size
 
 
 @compiled
 def _load_parameters(at: int, lane: int, b: int, s: int) -> None:
     width, p = read_int(at, Place.WIDTH), read_int(at, Place.P)
-    first = _in_vectors(at, lane, p)
+    first = in_vectors(at, lane, p)
     for i in range(p):
         value = number(at, Place.FACTOR, s * p + i) * number(at, Place.ROW_P, b * p + i)
         set_number(at, Place.Q, first + i * width, value + number(at, Place.SHIFT, s * p + i))
@@ -134,7 +83,7 @@ def _next_stop(at: int, k: int, s: int, o: int) -> float:
 @compiled
 def _change(at: int, lane: int, s: int) -> None:
     """Change the states as on entering segment ``s``."""
-    y, width, n = _in_y(at, lane), read_int(at, Place.WIDTH), read_int(at, Place.N)
+    y, width, n = in_y(at, lane), read_int(at, Place.WIDTH), read_int(at, Place.N)
     for i in range(n):
         kept = number(at, Place.KEEP, s * n + i) * read(y, i * width)
         write(y, i * width, kept + number(at, Place.ADD, s * n + i))
@@ -146,7 +95,7 @@ def _arrive(at: int, slot: int, g: int) -> bool:
     group, width, n = read_int(at, Place.GROUP), read_int(at, Place.WIDTH), read_int(at, Place.N)
     recorded = read_int(at, Place.RECORDED)
     lead = slot * group
-    t = _control(at, lead, Control.TIME)
+    t = control(at, lead, Control.TIME)
     k = whole(at, Place.WHICH, g)
     first_output, end = whole(at, Place.TIME_AT, k), whole(at, Place.TIME_AT, k + 1)
     last = whole(at, Place.SEGMENT_AT, k + 1)
@@ -163,18 +112,18 @@ def _arrive(at: int, slot: int, g: int) -> bool:
     stop = _next_stop(at, k, s, o)
     for j in range(group):
         lane, b = lead + j, g * group + j
-        _set_control(at, lane, Control.STOP, stop)
+        set_control(at, lane, Control.STOP, stop)
         if s != before:
             _load_parameters(at, lane, b, s)
-            _set_control(at, lane, Control.FRESH, 1.0)
-            _set_control(at, lane, Control.STIFF_COUNT, 0.0)
-            _set_control(at, lane, Control.REJECTED, 0.0)
+            set_control(at, lane, Control.FRESH, 1.0)
+            set_control(at, lane, Control.STIFF_COUNT, 0.0)
+            set_control(at, lane, Control.REJECTED, 0.0)
         if o == due or whole(at, Place.STATUS, b) != RUNNING:
             continue
-        if not _is_finite(at, lane, n):
+        if not is_finite(at, lane, n):
             set_whole(at, Place.STATUS, b, Status.BAD_START if s != before else Status.BLOW_UP)
             continue
-        y = _in_y(at, lane)
+        y = in_y(at, lane)
         for m in range(due - first_output, o - first_output):
             place = (b * read_int(at, Place.OUTPUTS) + m) * recorded
             for i in range(recorded):
@@ -193,18 +142,18 @@ def _enter(at: int, mode: int, slot: int, g: int, limit: float) -> bool:
     set_number(at, Place.MARK, g, t)
     for j in range(group):
         lane, b = lead + j, g * group + j
-        y = _in_y(at, lane)
+        y = in_y(at, lane)
         for i in range(n):
             write(y, i * width, number(at, Place.ROW_Y, b * n + i))
-        for entry in range(_CONTROLS):
-            _set_control(at, lane, entry, 0.0)
+        for entry in range(CONTROLS):
+            set_control(at, lane, entry, 0.0)
         steps = float(whole(at, Place.ROW_STEPS, b))
-        _set_control(at, lane, Control.TIME, t)
-        _set_control(at, lane, Control.STEP, number(at, Place.ROW_STEP, g))
-        _set_control(at, lane, Control.STEPS, steps)
-        _set_control(at, lane, Control.STEP_LIMIT, steps + limit)
-        _set_control(at, lane, Control.LIVE, 1.0)
-    size = _largest(at, lead)
+        set_control(at, lane, Control.TIME, t)
+        set_control(at, lane, Control.STEP, number(at, Place.ROW_STEP, g))
+        set_control(at, lane, Control.STEPS, steps)
+        set_control(at, lane, Control.STEP_LIMIT, steps + limit)
+        set_control(at, lane, Control.LIVE, 1.0)
+    size = largest(at, lead)
     if mode == EXPLICIT:
         set_number(at, Place.STARTED, g, size)
         return _arrive(at, slot, g)
@@ -212,11 +161,11 @@ def _enter(at: int, mode: int, slot: int, g: int, limit: float) -> bool:
     stop = _next_stop(at, whole(at, Place.WHICH, g), s, whole(at, Place.OUTPUT, g))
     for j in range(group):
         _load_parameters(at, lead + j, g * group + j, s)
-        _set_control(at, lead + j, Control.STOP, stop)
+        set_control(at, lead + j, Control.STOP, stop)
     if mode == SETTLE:
         set_number(at, Place.STARTED, g, size)
-        _set_control(at, lead, Control.FLOOR, STEADY_RTOL * (STEADY_FLOOR * size + 1e-12))
-        _set_control(at, lead, Control.FRESH, 1.0)
+        set_control(at, lead, Control.FLOOR, STEADY_RTOL * (STEADY_FLOOR * size + 1e-12))
+        set_control(at, lead, Control.FRESH, 1.0)
     return False
 
 
@@ -229,13 +178,13 @@ def _leave(at: int, slot: int, g: int, status: int) -> None:
         lane, b = lead + j, g * group + j
         if whole(at, Place.STATUS, b) == RUNNING:
             set_whole(at, Place.STATUS, b, status)
-        set_whole(at, Place.ROW_STEPS, b, int(_control(at, lane, Control.STEPS)))
-        _set_control(at, lane, Control.LIVE, 0.0)
-        y = _in_y(at, lane)
+        set_whole(at, Place.ROW_STEPS, b, int(control(at, lane, Control.STEPS)))
+        set_control(at, lane, Control.LIVE, 0.0)
+        y = in_y(at, lane)
         for i in range(n):
             set_number(at, Place.ROW_Y, b * n + i, read(y, i * width))
-    set_number(at, Place.ROW_TIME, g, _control(at, lead, Control.TIME))
-    set_number(at, Place.ROW_STEP, g, _control(at, lead, Control.STEP))
+    set_number(at, Place.ROW_TIME, g, control(at, lead, Control.TIME))
+    set_number(at, Place.ROW_STEP, g, control(at, lead, Control.STEP))
     set_whole(at, Place.HOLDS, slot, -1)
 
 
@@ -244,11 +193,11 @@ def _verdict(at: int, mode: int, slot: int, g: int, most: float, patience: float
     """What a group that has not arrived needs: go on, hand over, or fail with a status."""
     group = read_int(at, Place.GROUP)
     lead = slot * group
-    t, h = _control(at, lead, Control.TIME), _control(at, lead, Control.STEP)
-    steps, stiff = _control(at, lead, Control.STEPS), _control(at, lead, Control.STIFF_COUNT)
+    t, h = control(at, lead, Control.TIME), control(at, lead, Control.STEP)
+    steps, stiff = control(at, lead, Control.STEPS), control(at, lead, Control.STIFF_COUNT)
     lost = t + 0.01 * h == t or not h >= 1e-100
     if lost or (mode == SETTLE and steps >= _STEADY_STEPS):
-        if _largest(at, lead) > _BLOW_UP_RATIO * (1.0 + number(at, Place.STARTED, g)):
+        if largest(at, lead) > _BLOW_UP_RATIO * (1.0 + number(at, Place.STARTED, g)):
             return Status.BLOW_UP
         return Status.NO_STEADY_STATE if mode == SETTLE else Status.STEP_TOO_SMALL
     if mode == SETTLE:
@@ -257,7 +206,7 @@ def _verdict(at: int, mode: int, slot: int, g: int, most: float, patience: float
         return Status.TOO_MANY_STEPS
     if mode == EXPLICIT and stiff >= STIFF_STEPS:
         return _HAND_OVER
-    if steps < _control(at, lead, Control.STEP_LIMIT):
+    if steps < control(at, lead, Control.STEP_LIMIT):
         return RUNNING
     k = whole(at, Place.WHICH, g)
     begin = number(at, Place.BREAKS, whole(at, Place.SEGMENT_AT, k))
@@ -272,59 +221,8 @@ def _verdict(at: int, mode: int, slot: int, g: int, most: float, patience: float
     elif stiff >= 1.0 or steps * (end - begin) > _EXPLICIT_PATIENCE * (t - begin):
         return _HAND_OVER
     for lane in range(lead, lead + group):
-        _set_control(at, lane, Control.STEP_LIMIT, min(steps + patience, most))
+        set_control(at, lane, Control.STEP_LIMIT, min(steps + patience, most))
     return RUNNING
-
-
-@compiled
-def _set_newton(at: int, lane: int, entry: int, value: float) -> None:
-    set_number(at, Place.NEWTON_CONTROL, entry * read_int(at, Place.WIDTH) + lane, value)
-
-
-@compiled
-def _polish(at: int, bits: int) -> None:
-    """Try Newton's method in the lanes of ``bits`` that are near a steady state.
-
-    Those whose first step is small and that converge are written out, with status OK.
-    """
-    width, n = read_int(at, Place.WIDTH), read_int(at, Place.N)
-    near = 0
-    for lane in range(width):
-        _set_newton(at, lane, Control.STEP, _control(at, lane, Control.STEP))
-        _set_newton(at, lane, Control.FLOOR, _control(at, lane, Control.FLOOR) / STEADY_RTOL)
-        _set_newton(at, lane, Control.SIZE, np.inf)
-        g = max(whole(at, Place.HOLDS, lane), 0)
-        for i in range(n):
-            place = i * width + lane
-            set_number(at, Place.NEWTON_Y, place, number(at, Place.Y, place))
-            set_number(at, Place.NEWTON_START, place, number(at, Place.ROW_Y, g * n + i))
-        settled = _control(at, lane, Control.SETTLING) < 1.0
-        if (
-            (bits >> lane) & 1
-            and settled
-            and _control(at, lane, Control.STEPS) >= _STEADY_FIRST_TRY
-        ):
-            near |= 1 << lane
-    for iteration in range(_NEWTON_ITERATIONS):
-        if near == 0:
-            return
-        invoke(whole(at, Place.STEP_CODE, _NEWTON), read_int(at, Place.NEWTON_BLOCKS), n)
-        for lane in range(width):
-            if (near >> lane) & 1 == 0:
-                continue
-            moved = number(at, Place.NEWTON_CONTROL, Control.SETTLING * width + lane)
-            before = number(at, Place.NEWTON_CONTROL, Control.SIZE * width + lane)
-            _set_newton(at, lane, Control.SIZE, moved)
-            if iteration == 0 and not moved < _NEWTON_NEAR:
-                near &= ~(1 << lane)
-            elif moved < _NEWTON_EXACT or (moved < _NEWTON_SETTLED and not moved < 0.5 * before):
-                near &= ~(1 << lane)
-                g = whole(at, Place.HOLDS, lane)
-                set_whole(at, Place.STATUS, g, Status.OK)
-                for i in range(n):
-                    set_number(
-                        at, Place.STATES, g * n + i, number(at, Place.NEWTON_Y, i * width + lane)
-                    )
 
 
 @compiled
@@ -333,9 +231,9 @@ def _share_step(at: int, slots: int) -> None:
     group = read_int(at, Place.GROUP)
     for slot in range(slots):
         lead = slot * group
-        step = _control(at, lead, Control.STEP)
+        step = control(at, lead, Control.STEP)
         for lane in range(lead + 1, lead + group):
-            _set_control(at, lane, Control.STEP, step)
+            set_control(at, lane, Control.STEP, step)
 
 
 @compiled
@@ -349,13 +247,13 @@ def _share_worst(at: int, slots: int) -> None:
     for slot in range(slots):
         lead = slot * group
         for entry in range(Control.ERROR, Control.STIFFNESS + 1):
-            worst = _control(at, lead, entry)
+            worst = control(at, lead, entry)
             for lane in range(lead + 1, lead + group):
-                other = _control(at, lane, entry)
+                other = control(at, lane, entry)
                 if other > worst:
                     worst = other
             for lane in range(lead, lead + group):
-                _set_control(at, lane, entry, worst)
+                set_control(at, lane, entry, worst)
 
 
 @compiled
@@ -369,12 +267,12 @@ def _prepare(at: int, slots: int) -> int:
     bad = 0
     for slot in range(slots):
         g, lead = whole(at, Place.HOLDS, slot), slot * group
-        if g < 0 or _control(at, lead, Control.FRESH) == 0.0:
+        if g < 0 or control(at, lead, Control.FRESH) == 0.0:
             continue
         for j in range(group):
             b = g * group + j
-            _set_control(at, lead + j, Control.FRESH, 0.0)
-            if whole(at, Place.STATUS, b) == RUNNING and not _is_finite(at, lead + j, 2 * n):
+            set_control(at, lead + j, Control.FRESH, 0.0)
+            if whole(at, Place.STATUS, b) == RUNNING and not is_finite(at, lead + j, 2 * n):
                 set_whole(at, Place.STATUS, b, Status.BAD_START)
         if whole(at, Place.STATUS, g * group) == Status.BAD_START:
             _leave(at, slot, g, Status.BAD_START)
@@ -414,8 +312,8 @@ def integrate(
         patience = _EXPLICIT_BUDGET
     limit = _STEADY_STEPS if mode == SETTLE else min(patience, most)
     for lane in range(vectors * width):
-        for entry in range(_CONTROLS):
-            _set_control(at, lane, entry, 0.0)
+        for entry in range(CONTROLS):
+            set_control(at, lane, entry, 0.0)
         set_whole(at, Place.HOLDS, lane, -1)
     following, left, busy = 0, 0, 0
     refill, changed = True, False
@@ -448,7 +346,7 @@ def integrate(
             if bits == 0:
                 continue
             if mode == SETTLE:
-                _polish(at, bits)
+                polish(at, bits)
             for w in range(width):
                 lane = v * width + w
                 if (bits >> w) & 1 == 0 or lane % group:
@@ -456,13 +354,13 @@ def integrate(
                 slot = lane // group
                 g = whole(at, Place.HOLDS, slot)
                 verdict = whole(at, Place.STATUS, g * group)
-                arrived = _control(at, lane, Control.TIME) == _control(at, lane, Control.STOP)
+                arrived = control(at, lane, Control.TIME) == control(at, lane, Control.STOP)
                 if verdict != RUNNING:
                     pass
                 elif arrived and mode != SETTLE:
                     if _arrive(at, slot, g):
                         verdict = Status.OK
-                    elif _control(at, lane, Control.FRESH) > 0.0:
+                    elif control(at, lane, Control.FRESH) > 0.0:
                         changed = True
                 else:
                     verdict = _verdict(at, mode, slot, g, most, patience)

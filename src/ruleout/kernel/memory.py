@@ -7,9 +7,9 @@ from enum import IntEnum
 import numpy as np
 
 from ruleout.kernel.assembly import ALIGNMENT
+from ruleout.kernel.controls import Control, Setting
 from ruleout.kernel.engine import SystemCode
 from ruleout.kernel.schedule import Integers, Schedule, addresses
-from ruleout.kernel.steps import Control, Setting
 from ruleout.kernel.types import Array
 
 RUNNING = -1

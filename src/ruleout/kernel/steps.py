@@ -9,9 +9,10 @@ All functions take the same arguments, in this order:
 ``q``, ``c``
     Parameters in force, and what the system's ``prepare`` made of them.
 ``control``
-    One vector for each member of :class:`Control`.
+    One vector for each member of :class:`~ruleout.kernel.controls.Control`.
 ``tolerance``
-    Scalars: the members of :class:`Setting`, then N absolute tolerances.
+    Scalars: the members of
+    :class:`~ruleout.kernel.controls.Setting`, then N absolute tolerances.
 ``scratch``
     :func:`scratch_vectors` vectors.
 ``functions``
@@ -25,11 +26,11 @@ The step functions know nothing else of a system, so one copy serves all.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from enum import IntEnum
 from typing import Final
 
 from ruleout.kernel.assembly import Assembly, Value
 from ruleout.kernel.coefficients import RODAS_A, RODAS_C, RODAS_GAMMA, TSIT_A, TSIT_ERROR
+from ruleout.kernel.controls import Control, Setting
 from ruleout.kernel.elementary import Elementary
 
 STEP_FUNCTIONS: Final = (
@@ -60,35 +61,6 @@ _FEW_PARTS: Final = 16.0
 _BITS_OF_ONE: Final = float(1023 << 52)
 _NEWTON_REACH: Final = 1e8
 """Newton's method is regularised on time scales this much longer than the last step."""
-
-
-class Control(IntEnum):
-    """What each lane knows about itself."""
-
-    TIME = 0
-    STEP = 1
-    TRIAL = 2
-    STOP = 3
-    ERROR = 4
-    STIFFNESS = 5
-    STIFF_COUNT = 6
-    STEPS = 7
-    STEP_LIMIT = 8
-    LIVE = 9
-    REJECTED = 10
-    SIZE = 11
-    FLOOR = 12
-    SETTLING = 13
-    FRESH = 14
-
-
-class Setting(IntEnum):
-    """What all lanes share."""
-
-    RTOL = 0
-    STIFF_LIMIT = 1
-    SETTLE_LIMIT = 2
-    FLOOR_FACTOR = 3
 
 
 def scratch_vectors(n: int, factors: int) -> int:
