@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import shutil
 import subprocess
 import sys
@@ -254,7 +255,15 @@ def test_report_writes_a_finished_run_again(
 
 def test_doctor_finds_nothing_wrong_here(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["doctor"]) == 0
-    assert "wrong" not in capsys.readouterr().out
+    out = capsys.readouterr().out
+    assert "wrong" not in out
+    assert f"ruleout {__version__}" in out
+    assert re.search(r"the integrator compiles and solves, (2|4|8|16) numbers at once", out)
+    assert re.search(r"compiled code is kept in \S", out)
+    speed = re.search(r"([\d,]+) small solves a second", out)
+    assert speed is not None
+    # Millions on an idle core; without machine code there would be some hundreds.
+    assert int(speed[1].replace(",", "")) > 5000
 
 
 def test_an_unknown_command_is_refused(tmp_path: Path) -> None:

@@ -30,11 +30,14 @@ def compiled(function: _Function) -> _Function:
 def entry_point(function: _Function) -> _Function:
     """Compile ``function``, keep the result on disk, and let other threads run meanwhile.
 
-    The copy on disk is renewed when the entry point's own file changes, not when others do.
+    The copy on disk is renewed when the entry point's own file changes, not when others do. Where
+    no folder can be written it is compiled anew in every process.
     """
-    result: _Function = njit(cache=True, nogil=True, error_model="numpy", no_cfunc_wrapper=True)(
-        function
-    )
+    options = {"nogil": True, "error_model": "numpy", "no_cfunc_wrapper": True}
+    try:
+        result: _Function = njit(cache=True, **options)(function)
+    except RuntimeError:
+        result = njit(**options)(function)
     return result
 
 
