@@ -49,6 +49,10 @@ def standardised(values: Array, columns: tuple[Column, ...], standard: Standard)
     return (transform(values, columns) - standard.location) / standard.spread
 
 
+SOONEST = 39
+"""Fewest replicates behind a decision to keep."""
+
+
 @lru_cache(maxsize=8)
 def boundaries(alpha: float, most: int, risk: float = 1e-3) -> tuple[NDArray[np.intp], ...]:
     """Return lower and upper stopping bounds on the count of exceedances, each (most + 1,).
@@ -118,12 +122,13 @@ def tally(exceeds: NDArray[np.bool_], alpha: float, least: int, most: int) -> Ta
 
     Walks through the replicates in their order and stops at the first bound, so that the answer
     does not depend on how many were computed ahead. A decision against the variant is not taken
-    before ``least`` replicates, so that small p-values have a resolution.
+    before ``least`` replicates, nor one for it before ``SOONEST``, so that p-values have a
+    resolution.
     """
     lower, upper = boundaries(alpha, most)
     counts = np.cumsum(exceeds)
     for n, count in enumerate(counts[:most], start=1):
-        if count >= upper[n]:
+        if n >= min(SOONEST, most) and count >= upper[n]:
             return Tally(int(count), n, decided=True)
         if n >= least and count <= lower[n]:
             return Tally(int(count), n, decided=True)

@@ -85,6 +85,8 @@ def _flags(
         flags.append("no fit found: every solve failed")
     elif fit.agree < 2:
         flags.append("searches disagree")
+    if name in results.missed:
+        flags.append(f"search fell short: {results.missed[name]}, which it contains, fits better")
     if np.isfinite(fit.objective) and not fit.converged:
         flags.append("chains not converged")
     if np.isfinite(fit.objective) and fit.failed_share > NOTEWORTHY:

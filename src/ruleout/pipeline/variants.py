@@ -9,6 +9,7 @@ from itertools import combinations
 
 import numpy as np
 
+from ruleout.fitting.search import AGREEMENT
 from ruleout.pipeline import tasks
 from ruleout.pipeline.flow import Checks, Fit, Flow
 from ruleout.pipeline.tasks import Arrays
@@ -49,6 +50,8 @@ class Settled:
         (larger, smaller) of candidate nestings that failed that test.
     spared : frozenset
         Variants not ruled out for want of points, whatever their p-value.
+    missed : mapping
+        Variants whose search fell short of one that they contain, and which that is.
     """
 
     order: tuple[str, ...]
@@ -60,6 +63,7 @@ class Settled:
     unreachable: tuple[tuple[str, str], ...]
     claims: tuple[ClaimVerdict, ...]
     spared: frozenset[str]
+    missed: dict[str, str]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -141,6 +145,10 @@ async def settle_variants(flow: Flow) -> Settled:
             verdict_ready[name] = group.create_task(keeps(name))
     done = {name: task.result() for name, task in fits.items()}
     contains = _transitive(order, confirmed)
+    missed = _missed(flow, done, contains)
+    for name in missed:
+        if own[name].rejected:
+            own[name] = Own(judged=False)
     spared = _spared(flow, done, own)
     for name in spared:
         own[name] = replace(own[name], rejected=False)
@@ -158,7 +166,27 @@ async def settle_variants(flow: Flow) -> Settled:
         tuple(sorted(unreachable)),
         claims,
         spared,
+        missed,
     )
+
+
+def _missed(
+    flow: Flow, fits: dict[str, Fit], contains: dict[str, frozenset[str]]
+) -> dict[str, str]:
+    """Return variants that fit worse than one they contain, by more than priors can explain.
+
+    With its further parameters at no effect a larger variant fits as well as the smaller one, less
+    what their priors say against that: some 4 each, two standard deviations.
+    """
+    missed = {}
+    for name, smaller in contains.items():
+        for s in sorted(smaller):
+            further = (
+                flow.bench.posterior(name).space.dimension - flow.bench.posterior(s).space.dimension
+            )
+            if fits[name].objective > fits[s].objective + AGREEMENT + 4.0 * further:
+                missed[name] = s
+    return missed
 
 
 def _spared(flow: Flow, fits: dict[str, Fit], own: dict[str, Own]) -> frozenset[str]:
