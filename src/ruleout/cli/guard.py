@@ -30,7 +30,8 @@ def guarded(kept: str = "Nothing was changed.") -> Iterator[None]:
     except KeyboardInterrupt as error:
         typer.echo(f"\nruleout: stopped. {kept}", err=True)
         raise typer.Exit(INTERRUPTED) from error
-    except (typer.Exit, SystemExit):
+    except (typer.Exit, SystemExit, BrokenPipeError):
+        # A reader such as `head` that has seen enough is left to click, which ends quietly.
         raise
     except Exception as error:
         if lacks_room(error):
