@@ -67,9 +67,15 @@ def address(
 
 @pytest.fixture
 def opened(browser: Any, address: str) -> Any:
+    from selenium.webdriver.support.ui import WebDriverWait
+
     browser.get_log("browser")
     browser.get("about:blank")
     browser.get(address)
+    # The script stands at the end of the page: it has run once all of the page is there.
+    WebDriverWait(browser, 60).until(
+        lambda page: page.execute_script("return document.readyState") == "complete"
+    )
     return browser
 
 
