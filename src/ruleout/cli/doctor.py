@@ -72,10 +72,11 @@ def _kernel() -> Iterator[str]:
 
     from ruleout.kernel.engine import host_width
 
-    program, protocol, times = _decay()
     one = np.ones((1, 1))
     with warnings.catch_warnings():
+        # Where no machine code can be made, the kernel warns and goes on without, slowly.
         warnings.simplefilter("error", RuntimeWarning)
+        program, protocol, times = _decay()
         solved = program.solve(one, one, [protocol]).states[0, :, 0]
     # A hundred times the solver's relative tolerance.
     if not np.allclose(solved, np.exp(-times), rtol=1e-4):
