@@ -4,10 +4,13 @@ from __future__ import annotations
 
 import os
 import sys
+import threading
 from collections.abc import Sequence
 
 INTERRUPTED = 130
 """Exit status after Ctrl-C, as shells give it."""
+PATIENCE = 1.0
+"""Seconds that a thread may take to finish after Ctrl-C."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -33,8 +36,17 @@ def main(arguments: Sequence[str] | None = None) -> int:
     else:
         status = 0
     if arguments is None and status == INTERRUPTED:
-        # A thread that is computing cannot be stopped, and would be waited for.
-        sys.stdout.flush()
-        sys.stderr.flush()
-        os._exit(status)
+        _leave_threads(status)
     return status
+
+
+def _leave_threads(status: int) -> None:
+    """End the process if threads compute on: Python would wait for what cannot be stopped."""
+    others = [t for t in threading.enumerate() if t is not threading.current_thread()]
+    for thread in others:
+        if not thread.daemon:
+            thread.join(PATIENCE)
+            if thread.is_alive():
+                sys.stdout.flush()
+                sys.stderr.flush()
+                os._exit(status)
