@@ -26,6 +26,10 @@ from ruleout.store import Store, digest, software
 from ruleout.variants import alternatives
 
 Array = NDArray[np.float64]
+CLOSE = 3.0
+"""The best of many draws comes within this of the least objective in some ten dimensions."""
+POLISHED = 6
+"""Draws of each ensemble, besides its best, from which the best fit is sought once more."""
 FAILED_SHARE = 0.02
 """With a larger share of failed solves inside the priors a variant is not judged."""
 
@@ -233,9 +237,7 @@ class Flow:
         assert kept is not None
         assert density is not None
         assert diagnostics is not None
-        leading = np.stack(
-            [kept[e].reshape(-1, kept.shape[-1])[np.argmax(density[e])] for e in range(ENSEMBLES)]
-        )
+        leading = np.concatenate([_polished_from(kept[e], density[e]) for e in range(ENSEMBLES)])
         polished = await self.piece(
             f"{name}/polish", fingerprint, tasks.polish, name, found, leading
         )
@@ -244,7 +246,9 @@ class Flow:
         return Fit(
             polished["q"][0],
             float(polished["objective"][0]),
-            int(polished["agree"]),
+            max(
+                int(polished["agree"]), _ensembles_at(polished["objective"][0], density, converged)
+            ),
             int(polished["starts"]),
             kept,
             density,
@@ -348,6 +352,22 @@ class Flow:
         values = np.concatenate([p["values"] for p in parts])
         good = np.isfinite(values).all(axis=1)
         return values[good], int((~good).sum())
+
+
+def _ensembles_at(objective: float, density: Array, converged: bool) -> int:
+    """Return how many converged ensembles came as close to the best fit as draws do.
+
+    Where the best fit lies on an edge, such as a fold of the rest state, descents stop short of it
+    at places of their own, and only the chains can tell that there is no better mode elsewhere.
+    """
+    return int(np.sum(-2.0 * density.max(axis=(1, 2)) < objective + CLOSE)) if converged else 0
+
+
+def _polished_from(chain: Array, density: Array) -> Array:
+    """Return the best draw of one ensemble and some spread over the rest, (K, D)."""
+    draws = chain.reshape(-1, chain.shape[-1])
+    spread = np.linspace(0, len(draws) - 1, POLISHED).astype(int)
+    return np.concatenate([draws[[np.argmax(density)]], draws[spread]])
 
 
 def diagnose_task(bench: Workbench, chains: Array) -> Arrays:

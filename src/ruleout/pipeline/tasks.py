@@ -164,7 +164,7 @@ def extend_chain(bench: Workbench, name: str, before: Arrays, stored: int, thin:
 
 
 def polish(bench: Workbench, name: str, found: Arrays, leading: NDArray[np.float64]) -> Arrays:
-    """Descend from the best draw of every ensemble and join the ends to the search's."""
+    """Descend from draws of every ensemble and join the ends to the search's."""
     posterior = bench.posterior(name)
     if posterior.space.dimension:
         ends = descend(posterior, leading, posterior.observed, tolerance=1e-4, iterations=60)
@@ -180,7 +180,7 @@ def polish(bench: Workbench, name: str, found: Arrays, leading: NDArray[np.float
         "q": q[order],
         "objective": objective[order],
         "agree": np.array(agree),
-        "starts": found["starts"],
+        "starts": found["starts"] + len(leading),
     }
 
 
