@@ -26,8 +26,9 @@ from ruleout.store import Store, digest, software
 from ruleout.variants import alternatives
 
 Array = NDArray[np.float64]
-CLOSE = 3.0
-"""The best of many draws comes within this of the least objective in some ten dimensions."""
+CLOSE = 0.5
+"""Best draws this far, per parameter, above the least objective are as close as draws come: twice
+the log density of a normal posterior lies one per parameter below its peak on average."""
 POLISHED = 6
 """Draws of each ensemble, besides its best, from which the best fit is sought once more."""
 FAILED_SHARE = 0.02
@@ -247,7 +248,8 @@ class Flow:
             polished["q"][0],
             float(polished["objective"][0]),
             max(
-                int(polished["agree"]), _ensembles_at(polished["objective"][0], density, converged)
+                int(polished["agree"]),
+                _ensembles_at(polished["objective"][0], density, kept.shape[-1], converged),
             ),
             int(polished["starts"]),
             kept,
@@ -354,13 +356,15 @@ class Flow:
         return values[good], int((~good).sum())
 
 
-def _ensembles_at(objective: float, density: Array, converged: bool) -> int:
+def _ensembles_at(objective: float, density: Array, dimension: int, converged: bool) -> int:
     """Return how many converged ensembles came as close to the best fit as draws do.
 
     Where the best fit lies on an edge, such as a fold of the rest state, descents stop short of it
     at places of their own, and only the chains can tell that there is no better mode elsewhere.
     """
-    return int(np.sum(-2.0 * density.max(axis=(1, 2)) < objective + CLOSE)) if converged else 0
+    if not converged:
+        return 0
+    return int(np.sum(-2.0 * density.max(axis=(1, 2)) < objective + CLOSE * dimension))
 
 
 def _polished_from(chain: Array, density: Array) -> Array:
